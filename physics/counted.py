@@ -76,14 +76,14 @@ def compound_poisson_quantiles(normal, mean_count, density):
     offset = max(0, int((mean - 16 * sigma) * cells))
     sums = (offset + np.arange(size)) / cells
 
-    def tilted_mean(tilt):
-        return mean_count * (probability * weights) @ np.exp(tilt * weights)
+    def tilted_excess(tilt, target):
+        return mean_count * (probability * weights) @ np.exp(tilt * weights) - target
 
     targets = np.unique(np.maximum(mean + sigma * np.array(_TILTS), 0.02 * mean))
     nearest = np.abs(sums[:, None] - targets).argmin(axis=1)
     log_probability = np.empty(size)
     for index, target in enumerate(targets):
-        tilt = brentq(lambda value: tilted_mean(value) - target, -400, 60)
+        tilt = brentq(tilted_excess, -400, 60, args=(target,))
         chosen = nearest == index
         log_probability[chosen] = _tilted_probabilities(mean_count, probability, tilt, offset, size)[chosen]
     mass = np.exp(log_probability)

@@ -1,0 +1,77 @@
+"""A model driven by named standard normals, block by block: draws -> model -> tally."""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from mc.correlation import Copula
+from mc.laws import Law
+from mc.plan import Block
+from mc.streams import Streams
+from mc.tally import Grid, Tally
+
+SLICE = 8192  # samples evaluated at once: a dozen arrays of this length stay in a core's cache
+PILOT = 4096  # samples that center and scale the tallies
+
+Model = Callable[[Mapping[str, np.ndarray]], Any]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Inputs:
+    """The random inputs of a model.
+
+    seed : see `mc.streams`
+    names : inputs the model reads
+    copula : correlations among them and others
+    """
+
+    seed: int
+    names: tuple[str, ...]
+    copula: Copula = Copula()
+
+    def slices(self, block: Block):
+        """The block's draws, a dictionary of (up to SLICE,) arrays at a time."""
+        streams = Streams(self.seed, block.number, self.copula.needed(self.names))
+        for start in range(0, block.size, SLICE):
+            yield self.copula.mix(streams.take(min(SLICE, block.size - start)))
+
+
+@dataclass(frozen=True, kw_only=True)
+class LawModel:
+    """A model of physical inputs turned into a model of standard normals.
+
+    model : function of a dictionary of values
+    laws : law of every input, by name
+    """
+
+    model: Model
+    laws: Mapping[str, Law]
+
+    def __call__(self, draws):
+        return self.model({name: law.from_normal(draws[name]) for name, law in self.laws.items()})
+
+
+@dataclass(frozen=True, kw_only=True)
+class Experiment:
+    """A task for the runner: tally a model's outputs over a block.
+
+    model : function of a dictionary of standard normals, each (n,); returns outputs (outputs, n), or (n,) for one
+    inputs : see `Inputs`
+    grid : where the tallies are centered, see `Experiment.prepare`
+    """
+
+    model: Model
+    inputs: Inputs
+    grid: Grid
+
+    @classmethod
+    def prepare(cls, model: Model, inputs: Inputs) -> "Experiment":
+        """An experiment whose grid comes from the first PILOT samples of block 0, which the run will see again."""
+        draws = next(inputs.slices(Block(0, PILOT)))
+        return cls(model=model, inputs=inputs, grid=Grid.from_pilot(np.atleast_2d(model(draws))))
+
+    def __call__(self, block: Block) -> Tally:
+        """Tally of one block. Raises FloatingPointError when an output is not finite."""
+        return Tally.of(self.grid, (np.atleast_2d(self.model(draws)) for draws in self.inputs.slices(block)))

@@ -1,0 +1,48 @@
+"""Where a plan is computed: in this process, or on joblib's workers. The answer has the same bits either way."""
+
+from collections.abc import Callable, Iterable
+from typing import Any
+
+from joblib import Parallel, delayed
+
+from mc.plan import Block, Plan
+
+Progress = Callable[[int, int], None]
+
+
+def _quiet(done: int, total: int) -> None:
+    """Progress that tells nobody."""
+
+
+def run_blocks(task: Callable[[Block], Any], blocks: Iterable[Block], *, jobs=1, backend="loky"):
+    """Results of a task for every block, in block order, as they come.
+
+    task : pure function of a block; must pickle for process backends
+    jobs : number of workers; 1 runs here
+    backend : any joblib backend, by name
+    """
+    if jobs == 1:
+        return (task(block) for block in blocks)
+    parallel = Parallel(n_jobs=jobs, backend=backend, return_as="generator", pre_dispatch="3*n_jobs")
+    return parallel(delayed(task)(block) for block in blocks)
+
+
+def run(task, plan: Plan, *, half_width=None, jobs=1, backend="loky", progress: Progress = _quiet):
+    """Run a plan to its end and return the sum of its tallies, added in block order.
+
+    task : function of a Block that returns a tally, anything with `+`
+    half_width : function of the summed tally, the half-width that `plan.precision` speaks of
+    progress : called with samples done and samples aimed at, after every block
+    Returns (tally, samples).
+    """
+    done, target, total = 0, plan.first_target(), None
+    while done < target:
+        for block, tally in zip(
+            plan.blocks(done, target), run_blocks(task, plan.blocks(done, target), jobs=jobs, backend=backend)
+        ):
+            total = tally if total is None else total + tally
+            progress(block.number * plan.block_size + block.size, target)
+        done = target
+        if plan.precision is not None:
+            target = plan.next_target(done, half_width(total))
+    return total, done

@@ -1,0 +1,116 @@
+"""Mergeable tallies of many outputs: powers about a pilot's center, a histogram, the extremes. Adding two merges them.
+
+The center and scale of each output come from a short pilot, so the power sums are those of numbers of order one and
+lose no digits (T. F. Chan, G. H. Golub, R. J. LeVeque, Am. Stat. 37, 242 (1983): shifted data). The histogram has 256
+cells a pilot sigma out to 16 sigmas; a quantile read from it is off by less than one cell, 1/256 of sigma.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+CELLS_PER_SIGMA = 256
+REACH = 16  # sigmas on either side
+CELLS = 2 * REACH * CELLS_PER_SIGMA
+
+
+@dataclass(frozen=True, kw_only=True)
+class Grid:
+    """Where each output's tally is centered and how it is scaled.
+
+    center, scale : in the outputs' own units, shape (outputs,); scale > 0
+    """
+
+    center: np.ndarray
+    scale: np.ndarray
+
+    @classmethod
+    def from_pilot(cls, values) -> "Grid":
+        """Grid from a pilot's outputs, shape (outputs, n). An output that does not vary gets a tiny scale."""
+        center = values.mean(axis=1)
+        floor = np.maximum(1e-9 * np.abs(center), np.finfo(float).tiny**0.5)
+        return cls(center=center, scale=np.maximum(values.std(axis=1), floor))
+
+
+@dataclass(frozen=True, kw_only=True)
+class Tally:
+    """Sums over samples of every output.
+
+    grid : see `Grid`; two tallies must share it to be added
+    count : number of samples
+    powers : sums of the scaled values' powers 1 to 4, shape (outputs, 4)
+    cells : histogram counts, shape (outputs, CELLS); the end cells also hold all beyond
+    smallest, largest : in the outputs' own units, shape (outputs,)
+    """
+
+    grid: Grid
+    count: int
+    powers: np.ndarray
+    cells: np.ndarray
+    smallest: np.ndarray
+    largest: np.ndarray
+
+    @classmethod
+    def of(cls, grid: Grid, slices) -> "Tally":
+        """Tally of an iterable of values, each slice of shape (outputs, n).
+
+        Raises FloatingPointError when a value is not finite: a sum with a hole in it is never handed on.
+        """
+        outputs = len(grid.center)
+        count, powers, cells = 0, np.zeros((outputs, 4)), np.zeros((outputs, CELLS), np.int64)
+        smallest, largest = np.full(outputs, np.inf), np.full(outputs, -np.inf)
+        for values in slices:
+            count += values.shape[1]
+            for row, (sample, center, scale) in enumerate(zip(values, grid.center, grid.scale)):
+                scaled = (sample - center) * (1 / scale)
+                squared = scaled * scaled
+                powers[row] += (
+                    scaled.sum(),
+                    squared.sum(),
+                    np.einsum("i,i->", squared, scaled),
+                    np.einsum("i,i->", squared, squared),
+                )
+                if not np.isfinite(powers[row, 1]):
+                    raise FloatingPointError(f"output {row} of a model is not finite")
+                place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.int32)
+                cells[row] += np.bincount(place, minlength=CELLS)
+                smallest[row] = min(smallest[row], sample.min())
+                largest[row] = max(largest[row], sample.max())
+        return cls(grid=grid, count=count, powers=powers, cells=cells, smallest=smallest, largest=largest)
+
+    def __add__(self, other: "Tally") -> "Tally":
+        return Tally(
+            grid=self.grid,
+            count=self.count + other.count,
+            powers=self.powers + other.powers,
+            cells=self.cells + other.cells,
+            smallest=np.minimum(self.smallest, other.smallest),
+            largest=np.maximum(self.largest, other.largest),
+        )
+
+    def central_moments(self):
+        """Mean and central moments 2 to 4 (divided by the count), each of shape (outputs,), in the outputs' units."""
+        first, second, third, fourth = (self.powers / self.count).T
+        variance = second - first**2
+        skewed = third - 3 * first * second + 2 * first**3
+        peaked = fourth - 4 * first * third + 6 * first**2 * second - 3 * first**4
+        scale = self.grid.scale
+        return self.grid.center + scale * first, scale**2 * variance, scale**3 * skewed, scale**4 * peaked
+
+    def value_at_rank(self, output: int, rank: float) -> float:
+        """Value below which `rank` of the samples lie, linear inside a cell.
+
+        output : row; rank : 0 to count
+        Returns the value in the output's unit; at and beyond the ends the smallest or the largest sample itself.
+        """
+        reached = np.cumsum(self.cells[output])
+        cell = int(np.searchsorted(reached, rank))
+        if rank <= 0 or cell == 0:
+            return float(self.smallest[output])
+        if rank >= self.count or cell >= CELLS - 1:
+            return float(self.largest[output])
+        before = reached[cell - 1]
+        place = cell + (rank - before) / (reached[cell] - before)
+        scaled = place / CELLS_PER_SIGMA - REACH
+        value = self.grid.center[output] + self.grid.scale[output] * scaled
+        return float(np.clip(value, self.smallest[output], self.largest[output]))
