@@ -1,7 +1,7 @@
 """A model driven by named standard normals, block by block: draws -> model -> tally."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -10,7 +10,7 @@ from mc.correlation import Copula
 from mc.laws import Law
 from mc.plan import Block
 from mc.streams import Streams
-from mc.tally import Grid, Tally
+from mc.tally import Grid, Moments, Tally
 
 SLICE = 8192  # samples evaluated at once: a dozen arrays of this length stay in a core's cache
 PILOT = 4096  # samples that center and scale the tallies
@@ -25,17 +25,19 @@ class Inputs:
     seed : see `mc.streams`
     names : inputs the model reads
     copula : correlations among them and others
+    slice_size : samples evaluated at once
     """
 
     seed: int
     names: tuple[str, ...]
-    copula: Copula = Copula()
+    copula: Copula = field(default_factory=Copula)
+    slice_size: int = SLICE
 
     def slices(self, block: Block):
-        """The block's draws, a dictionary of (up to SLICE,) arrays at a time."""
+        """The block's draws, a dictionary of (up to slice_size,) arrays at a time."""
         streams = Streams(self.seed, block.number, self.copula.needed(self.names))
-        for start in range(0, block.size, SLICE):
-            yield self.copula.mix(streams.take(min(SLICE, block.size - start)))
+        for start in range(0, block.size, self.slice_size):
+            yield self.copula.mix(streams.take(min(self.slice_size, block.size - start)))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -60,18 +62,20 @@ class Experiment:
     model : function of a dictionary of standard normals, each (n,); returns outputs (outputs, n), or (n,) for one
     inputs : see `Inputs`
     grid : where the tallies are centered, see `Experiment.prepare`
+    tally : `Tally`, or `Moments` where no quantile will be asked for
     """
 
     model: Model
     inputs: Inputs
     grid: Grid
+    tally: type[Moments] = Tally
 
     @classmethod
-    def prepare(cls, model: Model, inputs: Inputs) -> "Experiment":
-        """An experiment whose grid comes from the first PILOT samples of block 0, which the run will see again."""
+    def prepare(cls, model: Model, inputs: Inputs, tally: type[Moments] = Tally) -> "Experiment":
+        """An experiment whose grid comes from a pilot, the first slice of block 0, which the run will see again."""
         draws = next(inputs.slices(Block(0, PILOT)))
-        return cls(model=model, inputs=inputs, grid=Grid.from_pilot(np.atleast_2d(model(draws))))
+        return cls(model=model, inputs=inputs, grid=Grid.from_pilot(np.atleast_2d(model(draws))), tally=tally)
 
-    def __call__(self, block: Block) -> Tally:
+    def __call__(self, block: Block) -> Moments:
         """Tally of one block. Raises FloatingPointError when an output is not finite."""
-        return Tally.of(self.grid, (np.atleast_2d(self.model(draws)) for draws in self.inputs.slices(block)))
+        return self.tally.of(self.grid, (np.atleast_2d(self.model(draws)) for draws in self.inputs.slices(block)))

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import stats
 
-from mc.tally import Tally
+from mc.tally import Moments
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -152,7 +152,7 @@ def quantile_ranks(probability: float, n: int, level=0.95) -> tuple[int, int]:
 class Summary:
     """Estimates of one output of a tally."""
 
-    def __init__(self, tally: Tally, output: int = 0, level: float = 0.95):
+    def __init__(self, tally: Moments, output: int = 0, level: float = 0.95):
         self.tally, self.output, self.level, self.n = tally, output, level, tally.count
         mean, second, third, fourth = (float(moment[output]) for moment in tally.central_moments())
         self._mean = mean
@@ -173,7 +173,7 @@ class Summary:
         return skew_interval(self._skew, self.n, self.level)
 
     def quantile(self, probability: float) -> Estimate:
-        """Quantile by order statistics; a bound is infinite where the sample is too small to set one."""
+        """Quantile by order statistics, from a `Tally`; a bound is infinite where the sample is too small to set one."""
         low, high = quantile_ranks(probability, self.n, self.level)
         at_rank = self.tally.value_at_rank
         return Estimate(

@@ -33,60 +33,49 @@ class Grid:
 
 
 @dataclass(frozen=True, kw_only=True)
-class Tally:
-    """Sums over samples of every output.
+class Moments:
+    """Power sums over samples of every output.
 
     grid : see `Grid`; two tallies must share it to be added
     count : number of samples
     powers : sums of the scaled values' powers 1 to 4, shape (outputs, 4)
-    cells : histogram counts, shape (outputs, CELLS); the end cells also hold all beyond
-    smallest, largest : in the outputs' own units, shape (outputs,)
     """
 
     grid: Grid
     count: int
     powers: np.ndarray
-    cells: np.ndarray
-    smallest: np.ndarray
-    largest: np.ndarray
 
     @classmethod
-    def of(cls, grid: Grid, slices) -> "Tally":
+    def of(cls, grid: Grid, slices):
         """Tally of an iterable of values, each slice of shape (outputs, n).
 
         Raises FloatingPointError when a value is not finite: a sum with a hole in it is never handed on.
         """
-        outputs = len(grid.center)
-        count, powers, cells = 0, np.zeros((outputs, 4)), np.zeros((outputs, CELLS), np.int64)
-        smallest, largest = np.full(outputs, np.inf), np.full(outputs, -np.inf)
+        tally = cls._empty(grid)
         for values in slices:
-            count += values.shape[1]
-            for row, (sample, center, scale) in enumerate(zip(values, grid.center, grid.scale)):
-                scaled = (sample - center) * (1 / scale)
-                squared = scaled * scaled
-                powers[row] += (
-                    scaled.sum(),
-                    squared.sum(),
-                    np.einsum("i,i->", squared, scaled),
-                    np.einsum("i,i->", squared, squared),
-                )
-                if not np.isfinite(powers[row, 1]):
+            tally["count"] += values.shape[1]
+            for row, sample in enumerate(values):
+                scaled = (sample - grid.center[row]) * (1 / grid.scale[row])
+                if not np.isfinite(scaled.sum()):
                     raise FloatingPointError(f"output {row} of a model is not finite")
-                place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.int32)
-                cells[row] += np.bincount(place, minlength=CELLS)
-                smallest[row] = min(smallest[row], sample.min())
-                largest[row] = max(largest[row], sample.max())
-        return cls(grid=grid, count=count, powers=powers, cells=cells, smallest=smallest, largest=largest)
+                cls._take(tally, row, sample, scaled)
+        return cls(grid=grid, **tally)
 
-    def __add__(self, other: "Tally") -> "Tally":
-        return Tally(
-            grid=self.grid,
-            count=self.count + other.count,
-            powers=self.powers + other.powers,
-            cells=self.cells + other.cells,
-            smallest=np.minimum(self.smallest, other.smallest),
-            largest=np.maximum(self.largest, other.largest),
-        )
+    @classmethod
+    def _empty(cls, grid):
+        return {"count": 0, "powers": np.zeros((len(grid.center), 4))}
+
+    @classmethod
+    def _take(cls, tally, row, sample, scaled):
+        squared = scaled * scaled
+        third, fourth = (np.einsum("i,i->", squared, other) for other in (scaled, squared))
+        tally["powers"][row] += scaled.sum(), squared.sum(), third, fourth
+
+    def __add__(self, other):
+        return type(self)(grid=self.grid, **self._sums(other))
+
+    def _sums(self, other):
+        return {"count": self.count + other.count, "powers": self.powers + other.powers}
 
     def central_moments(self):
         """Mean and central moments 2 to 4 (divided by the count), each of shape (outputs,), in the outputs' units."""
@@ -96,6 +85,43 @@ class Tally:
         peaked = fourth - 4 * first * third + 6 * first**2 * second - 3 * first**4
         scale = self.grid.scale
         return self.grid.center + scale * first, scale**2 * variance, scale**3 * skewed, scale**4 * peaked
+
+
+@dataclass(frozen=True, kw_only=True)
+class Tally(Moments):
+    """Moments with a histogram and the extremes, so that quantiles can be read.
+
+    cells : histogram counts, shape (outputs, CELLS); the end cells also hold all beyond
+    smallest, largest : in the outputs' own units, shape (outputs,)
+    """
+
+    cells: np.ndarray
+    smallest: np.ndarray
+    largest: np.ndarray
+
+    @classmethod
+    def _empty(cls, grid):
+        outputs = len(grid.center)
+        return super()._empty(grid) | {
+            "cells": np.zeros((outputs, CELLS), np.int64),
+            "smallest": np.full(outputs, np.inf),
+            "largest": np.full(outputs, -np.inf),
+        }
+
+    @classmethod
+    def _take(cls, tally, row, sample, scaled):
+        super()._take(tally, row, sample, scaled)
+        place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.int32)
+        tally["cells"][row] += np.bincount(place, minlength=CELLS)
+        tally["smallest"][row] = min(tally["smallest"][row], sample.min())
+        tally["largest"][row] = max(tally["largest"][row], sample.max())
+
+    def _sums(self, other):
+        return super()._sums(other) | {
+            "cells": self.cells + other.cells,
+            "smallest": np.minimum(self.smallest, other.smallest),
+            "largest": np.maximum(self.largest, other.largest),
+        }
 
     def value_at_rank(self, output: int, rank: float) -> float:
         """Value below which `rank` of the samples lie, linear inside a cell.

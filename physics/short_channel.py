@@ -114,7 +114,7 @@ class QuasiTwoDimensional:
         """
         decay = quasi_two_dimensional_length(oxide_thickness, electrostatics.depletion_width, self.eta)
         shift = quasi_two_dimensional_shift(length / decay, electrostatics.junction_barrier, drain_voltage)
-        return 1 - shift * electrostatics.oxide_capacitance / electrostatics.bulk_charge
+        return 1 - shift * OXIDE_PERMITTIVITY / oxide_thickness / electrostatics.bulk_charge
 
 
 ShortChannel = LongChannel | ChargeSharing | QuasiTwoDimensional

@@ -10,21 +10,19 @@ from physics.silicon import ELECTRON_AFFINITY, band_gap, fermi_potential, therma
 
 
 class Electrostatics(NamedTuple):
-    """What a wide, long device has at threshold; everything that does not depend on width and length.
+    """What the silicon of a wide, long device has at threshold; no dimension and no oxide enters.
 
     surface_potential : band bending at the source end without body bias [V]
     depletion_width : with body bias [m]
     bulk_charge : magnitude of the depletion charge with body bias [C/m^2]
-    oxide_capacitance : gate oxide capacitance [F/m^2]
-    flat_band_voltage : flat-band voltage [V]
+    silicon_work_function : vacuum level to the Fermi level of the substrate [V]
     junction_barrier : built-in potential of the source less the surface potential [V]
     """
 
     surface_potential: Any
     depletion_width: Any
     bulk_charge: Any
-    oxide_capacitance: Any
-    flat_band_voltage: Any
+    silicon_work_function: Any
     junction_barrier: Any
 
 
@@ -123,10 +121,10 @@ def gate_depletion_potential(bulk_charge, gate_doping):
 
 
 def electrostatics(device: Device) -> Electrostatics:
-    """The wide-channel quantities of a device, each computed once.
+    """The silicon's part of a threshold, computed once and shared by every width, length and oxide.
 
     device : see `physics.device.Device`
-    Returns Electrostatics with the broadcast shapes of what each entry depends on; widths and lengths do not enter.
+    Returns Electrostatics, each entry with the shape of what it depends on.
     The surface potential is phi_F(surface) + phi_F(substrate): the carrier density at the surface then equals the doping
     there, and uniform doping gives 2 phi_F. That holds while the depletion edge lies below the surface layer.
     """
@@ -138,16 +136,12 @@ def electrostatics(device: Device) -> Electrostatics:
         at_surface = fermi_potential(profile.surface_doping, kt, device.intrinsic_density)
     potential = fermi + at_surface
     half_gap = band_gap(device.temperature) / 2
-    work_function_difference = device.gate_work_function - (ELECTRON_AFFINITY + half_gap + device.polarity * fermi)
-    capacitance = oxide_capacitance(device.oxide_thickness)
     width = profile.depletion_width(potential + device.body_bias)
     return Electrostatics(
         surface_potential=potential,
         depletion_width=width,
         bulk_charge=profile.depletion_charge(width),
-        oxide_capacitance=capacitance,
-        flat_band_voltage=flat_band_voltage(work_function_difference, device.oxide_charge, capacitance)
-        + device.flat_band_shift,
+        silicon_work_function=ELECTRON_AFFINITY + half_gap + device.polarity * fermi,
         junction_barrier=half_gap + fermi - potential,
     )
 
@@ -165,11 +159,12 @@ def threshold_voltage(device: Device, state: Electrostatics, drain_voltage=0.0):
     width_factor = device.edge.charge_factor(state.depletion_width, device.width, device.oxide_thickness)
     length_factor = device.short_channel.charge_factor(state, device.length, device.oxide_thickness, drain_voltage)
     charge = width_factor * length_factor * state.bulk_charge
+    capacitance = oxide_capacitance(device.oxide_thickness)
+    work_function_difference = device.gate_work_function + device.flat_band_shift - state.silicon_work_function
+    flat_band = flat_band_voltage(work_function_difference, device.oxide_charge, capacitance)
     potential = state.surface_potential
     if np.isfinite(device.gate_doping):
         potential = potential + gate_depletion_potential(charge, device.gate_doping)
     if device.quantum_shift:
         potential = potential + quantum_potential(state.bulk_charge / SILICON_PERMITTIVITY, device.temperature)
-    return long_channel_threshold(
-        state.flat_band_voltage, potential, charge, state.oxide_capacitance, device.polarity
-    )
+    return long_channel_threshold(flat_band, potential, charge, capacitance, device.polarity)
