@@ -53,18 +53,27 @@ class Copula:
             matrix[row, column] = matrix[column, row] = value
         return cls(names=names, root=semidefinite_root(matrix) if names else None)
 
-    def needed(self, names) -> tuple[str, ...]:
-        """The inputs to draw so that `names` can be mixed: themselves, and their partners' streams."""
-        if not set(names) & set(self.names):
-            return tuple(names)
-        return tuple(dict.fromkeys([*names, *self.names]))
+    def _parts(self, name):
+        """Weights and names of the independent normals that one correlated input is made of."""
+        row = self.root[self.names.index(name)]
+        return [(weight, other) for weight, other in zip(row, self.names) if weight]
 
-    def mix(self, draws):
-        """Correlated standard normals from independent ones; inputs that are in no pair pass unchanged."""
-        if not self.names or self.names[0] not in draws:
-            return draws
-        mixed = dict(draws)
-        for row, name in enumerate(self.names):
-            parts = [(weight, other) for weight, other in zip(self.root[row], self.names) if weight]
-            mixed[name] = sum(weight * draws[other] for weight, other in parts)
-        return mixed
+    def needed(self, names) -> tuple[str, ...]:
+        """The independent inputs to draw so that `names` can be mixed."""
+        partners = [other for name in names if name in self.names for _, other in self._parts(name)]
+        return tuple(dict.fromkeys([*names, *partners]))
+
+    def mix(self, draws, names):
+        """Correlated standard normals `names` from independent ones; inputs that are in no pair pass unchanged.
+
+        draws : arrays by name, at least `needed(names)`
+        Returns arrays by name, exactly `names`.
+        """
+        return {name: self._mixed(draws, name) if name in self.names else draws[name] for name in names}
+
+    def _mixed(self, draws, name):
+        (weight, first), *others = self._parts(name)
+        total = draws[first] if weight == 1 else weight * draws[first]
+        for weight, other in others:
+            total = total + weight * draws[other]
+        return total

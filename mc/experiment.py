@@ -37,7 +37,7 @@ class Inputs:
         """The block's draws, a dictionary of (up to slice_size,) arrays at a time."""
         streams = Streams(self.seed, block.number, self.copula.needed(self.names))
         for start in range(0, block.size, self.slice_size):
-            yield self.copula.mix(streams.take(min(self.slice_size, block.size - start)))
+            yield self.copula.mix(streams.take(min(self.slice_size, block.size - start)), self.names)
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -146,9 +146,10 @@ class CountedLaw:
         Returns (sum of weights - mean)/sigma [1], increasing in `normal`.
         """
         place = (normal - self.normal_start) * self.steps_per_normal
-        left = np.clip(place.astype(np.intp), 0, self.center.size - 2)
+        left = np.clip(place, 0, self.center.size - 2).astype(np.int32)
         share = place - left
         distance = 1 / np.sqrt(mean_count) - self.inverse_root
-        lower = self.center[left] + distance * self.slope[left]
-        upper = self.center[left + 1] + distance * self.slope[left + 1]
+        lower = self.center.take(left) + distance * self.slope.take(left)
+        right = left + np.int32(1)
+        upper = self.center.take(right) + distance * self.slope.take(right)
         return lower + share * (upper - lower)

@@ -1,0 +1,147 @@
+"""What one drawn width and length make of a nominal device: electrical dimensions and the sizes of its local scatter."""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from physics import dopants, roughness, short_channel, threshold
+from physics.counted import CountedLaw, layered_weight_density
+from physics.device import Device
+from studies.errors import InputError
+from studies.process_file import LEVELS
+from studies.process_file import Device as DeviceRecord
+from studies.units import SUFFIXES, si
+
+FEWEST_DOPANTS = 2.0
+CLEAR_SIGMAS = 8  # a channel's dimension must exceed this many sigmas of its variation
+
+
+@dataclass(frozen=True, kw_only=True)
+class Geometry:
+    """A drawn width and length, and what they make of the local scatter.
+
+    width, length : nominal electrical dimensions [m]
+    drawn_width : drawn width [m]
+    gate_edge_sigma, active_edge_sigma : sigma of the mean length and width [m]
+    oxide_sigma : relative sigma of the mean oxide thickness [1]
+    grain_sigma, remainder_sigma : sigma of the threshold [V]
+    current_factor_sigma : relative sigma of the current factor [1]
+    fringe_shape : field-oxide shape whose fringe dopants are counted too, 0 for none [1]
+    counted : tabulated law of the dopants; None for the normal law or none
+    """
+
+    width: float
+    length: float
+    drawn_width: float
+    gate_edge_sigma: float
+    active_edge_sigma: float
+    oxide_sigma: float
+    grain_sigma: float
+    remainder_sigma: float
+    current_factor_sigma: float
+    fringe_shape: float
+    counted: CountedLaw | None
+
+
+def make_geometry(nominal: Device, record: DeviceRecord, where: str, width_um: float, length_um: float) -> Geometry:
+    """Geometry of a drawn width and length.
+
+    where : file and device, for messages
+    Raises InputError for a width or a length that its bias or its variation eats up, a width outside an edge's table, a
+    channel too short for its formula, or one with hardly a dopant under it.
+    """
+    width = _electrical(record, where, width_um, "width")
+    length = _electrical(record, where, length_um, "length")
+    sized = replace(nominal, width=width, length=length)
+    _check_edge_table(sized, where)
+    state = threshold.electrostatics(sized)
+    try:
+        threshold.threshold_voltage(sized, state)
+    except short_channel.ChannelTooShort as error:
+        raise InputError(f"{where}: length_um = {length_um:g}: {error}") from None
+    scatter = record.scatter
+    fringe_shape = sized.edge.shape if scatter.fringe_dopants else 0.0
+    return Geometry(
+        width=width,
+        length=length,
+        drawn_width=width_um * SUFFIXES["um"],
+        gate_edge_sigma=_edge_sigma(scatter, "gate_edge", width),
+        active_edge_sigma=_edge_sigma(scatter, "active_edge", length),
+        oxide_sigma=_oxide_sigma(scatter, sized),
+        grain_sigma=_grain_sigma(scatter, sized),
+        remainder_sigma=float(roughness.area_law_sigma(si(scatter, "remainder_pair_mv_um"), width, length)),
+        current_factor_sigma=float(
+            roughness.area_law_sigma(si(scatter, "current_factor_pair_percent_um"), width, length)
+        ),
+        fringe_shape=fringe_shape,
+        counted=_counted_law(sized, state, fringe_shape, where) if scatter.dopants == "counted" else None,
+    )
+
+
+def _electrical(record: DeviceRecord, where: str, drawn_um: float, dimension: str) -> float:
+    bias = getattr(record, f"{dimension}_bias_nm")
+    electrical = drawn_um * SUFFIXES["um"] + bias * SUFFIXES["nm"]
+    if electrical <= 0:
+        raise InputError(f"{where}.{dimension}_bias_nm = {bias:g}: leaves nothing of {dimension}_um = {drawn_um:g}")
+    spread = getattr(record.variation, dimension)
+    sigma_nm = float(np.sqrt(sum(getattr(spread, f"{level}_nm") ** 2 for level in LEVELS)))
+    if electrical < CLEAR_SIGMAS * sigma_nm * SUFFIXES["nm"]:
+        raise InputError(
+            f"{where}.variation.{dimension}: a sigma of {sigma_nm:g} nm is too large for {dimension}_um = {drawn_um:g}; "
+            f"{CLEAR_SIGMAS} sigmas must leave something of the channel"
+        )
+    return electrical
+
+
+def _check_edge_table(device: Device, where: str) -> None:
+    smallest = getattr(device.edge, "smallest_width", 0.0)
+    if device.width < smallest * (1 - 1e-9):
+        raise InputError(
+            f"{where}.edge.table_width_um: the table starts at {smallest * 1e6:g} um; an electrical width of "
+            f"{device.width * 1e6:g} um is asked for"
+        )
+
+
+def _edge_sigma(scatter, name: str, along: float) -> float:
+    if getattr(scatter, f"{name}_nm") == 0:
+        return 0.0
+    correlation_length = si(scatter, f"{name}_correlation_nm")
+    return float(
+        roughness.edge_pair_sigma(si(scatter, f"{name}_nm"), correlation_length, along, scatter.edge_correlation)
+    )
+
+
+def _oxide_sigma(scatter, device: Device) -> float:
+    if scatter.oxide_roughness_nm == 0:
+        return 0.0
+    sigma = roughness.oxide_roughness_sigma(
+        si(scatter, "oxide_roughness_nm"), si(scatter, "oxide_roughness_correlation_nm"), device.width, device.length
+    )
+    return float(sigma) / device.oxide_thickness
+
+
+def _grain_sigma(scatter, device: Device) -> float:
+    if scatter.grain_mv == 0:
+        return 0.0
+    factor = roughness.VORONOI_AREA_FACTOR if scatter.grain_cells == "voronoi" else 1.0
+    area = si(scatter, "grain_area_nm2")
+    return float(roughness.grain_sigma(si(scatter, "grain_mv"), area, device.width, device.length, factor))
+
+
+def _counted_law(device: Device, state, fringe_shape: float, where: str) -> CountedLaw:
+    profile, depletion = device.profile, state.depletion_width
+    count = dopants.weighted_count(profile, depletion, device.width, device.length, 0, fringe_shape)
+    if count < FEWEST_DOPANTS:
+        raise InputError(
+            f"{where}: {count:.2g} dopants under a channel of {device.width * 1e6:g} by {device.length * 1e6:g} um; below "
+            f"{FEWEST_DOPANTS:g} the counted law is not tabulated and a threshold has little meaning"
+        )
+    depth_ratio = getattr(profile, "surface_depth", 0.0) / depletion
+    fringe = dopants.fringe_weighted_dopants(profile.surface_doping, depletion, fringe_shape, 0)
+    fringe_ratio = fringe / (profile.doping * device.width * depletion)
+    surface_ratio = profile.surface_doping / profile.doping
+
+    def density(weight):
+        return layered_weight_density(weight, surface_ratio, depth_ratio, fringe_ratio)
+
+    return CountedLaw.build(float(count), density)

@@ -1,0 +1,87 @@
+"""The nominal transistor: a process file's record turned into the physics' SI device."""
+
+import numpy as np
+
+from physics import edges, short_channel, silicon, threshold
+from physics.device import Device
+from physics.profile import StepProfile, UniformProfile
+from studies.errors import InputError, one_line
+from studies.process_file import Device as DeviceRecord
+from studies.process_file import ProcessFile
+from studies.units import SUFFIXES, ZERO_CELSIUS, si
+
+INTRINSIC_DENSITY = {
+    "sproul green": silicon.intrinsic_density,
+    "misiakos tsamakis": silicon.intrinsic_density_misiakos,
+}
+
+
+def _edge(record) -> edges.Edge:
+    if record.kind == "field oxide":
+        return edges.FieldOxide(shape=np.pi / 2 if record.shape is None else record.shape)
+    if record.kind == "trench":
+        return edges.Trench(field_oxide_thickness=si(record, "field_oxide_nm"))
+    if record.kind == "table":
+        widths = np.array(record.table_width_um) * SUFFIXES["um"]
+        return edges.TabulatedEdge(width=widths, factor=record.table_factor)
+    return edges.NoEdge()
+
+
+def _short_channel(record: DeviceRecord) -> short_channel.ShortChannel:
+    kind = record.short_channel.kind
+    if kind == "charge sharing":
+        return short_channel.ChargeSharing(junction_depth=si(record, "junction_depth_nm"))
+    if kind == "quasi two-dimensional":
+        return short_channel.QuasiTwoDimensional(eta=record.short_channel.eta)
+    return short_channel.LongChannel()
+
+
+def _profile(record: DeviceRecord):
+    if record.surface_depth_nm is None:
+        return UniformProfile(doping=si(record, "doping_per_cm3"))
+    return StepProfile(
+        surface_doping=si(record, "surface_doping_per_cm3"),
+        surface_depth=si(record, "surface_depth_nm"),
+        doping=si(record, "doping_per_cm3"),
+    )
+
+
+def _gate_work_function(record: DeviceRecord, temperature: float) -> float:
+    if record.gate is None:
+        return si(record, "gate_work_function_ev")
+    # degenerate polysilicon: the Fermi level at the conduction or the valence band edge; common practice
+    return silicon.ELECTRON_AFFINITY + (silicon.band_gap(temperature) if record.gate == "p+ polysilicon" else 0.0)
+
+
+def nominal_device(file: ProcessFile, name: str, *, body_bias_v: float, temperature_c: float | None) -> Device:
+    """The nominal device of a process option, one metre wide and long until a geometry is chosen.
+
+    body_bias_v : reverse body bias, a magnitude
+    temperature_c : overrides the file's temperature; None keeps it
+    Raises InputError for a surface layer deeper than the depletion region.
+    """
+    record = file.device(name)
+    temperature = (file.process.temperature_c if temperature_c is None else temperature_c) + ZERO_CELSIUS
+    device = Device(
+        polarity=1.0 if record.channel == "n" else -1.0,
+        temperature=temperature,
+        intrinsic_density=float(INTRINSIC_DENSITY[file.process.intrinsic_density](temperature)),
+        width=1.0,
+        length=1.0,
+        oxide_thickness=si(record, "oxide_thickness_nm"),
+        profile=_profile(record),
+        gate_work_function=_gate_work_function(record, temperature),
+        oxide_charge=si(record, "oxide_charge_per_cm2"),
+        edge=_edge(record.edge),
+        short_channel=_short_channel(record),
+        body_bias=body_bias_v,
+        quantum_shift=record.quantum_shift,
+        gate_doping=np.inf if record.gate_doping_per_cm3 is None else si(record, "gate_doping_per_cm3"),
+    )
+    depletion = threshold.electrostatics(device).depletion_width
+    if record.surface_depth_nm is not None and si(record, "surface_depth_nm") >= depletion:
+        raise InputError(
+            f"{one_line(file.path)}: device.{one_line(name)}.surface_depth_nm = {record.surface_depth_nm:g}: must be less "
+            f"than the depletion width, {depletion * 1e9:.1f} nm here; deeper, only surface_doping_per_cm3 counts"
+        )
+    return device
