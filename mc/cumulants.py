@@ -5,7 +5,9 @@ from collections.abc import Callable, Sequence
 import numpy as np
 from scipy.special import log_ndtr, ndtri_exp
 
-NODES = 16
+NODES = 12  # exact for polynomials up to degree 23 in one input
+
+REACH = 8.0  # sigmas up to which the Cornish-Fisher expansion is used
 
 
 def normal_nodes(count: int = NODES):
@@ -55,13 +57,15 @@ def score_from_value(standard, skew, excess):
     """Normal score of a standardised value: the w with P(X <= x) = Phi(w).
 
     standard : (x - mean)/sigma; skew, excess : of X; any shapes that broadcast
-    Range: skew well below 1, as for a sum of several parts; monotone there.
+    Range: skew well below 1, as for a sum of several parts; monotone there. Beyond REACH sigmas the correction stays what
+    it is at REACH, since the expansion's powers would take over and turn the probability back.
     Source: E. A. Cornish and R. A. Fisher, Rev. Inst. Int. Stat. 5, 307 (1937); M. Abramowitz and I. A. Stegun, 26.2.49
     inverted (memory).
     """
-    square = standard**2
+    near = np.clip(standard, -REACH, REACH)
+    square = near**2
     first = skew / 6 * (square - 1)
-    second = standard * (excess / 24 * (square - 3) - skew**2 / 36 * (4 * square - 7))
+    second = near * (excess / 24 * (square - 3) - skew**2 / 36 * (4 * square - 7))
     return standard - first - second
 
 

@@ -7,6 +7,9 @@ from scipy import stats
 
 from mc.tally import Moments
 
+MOST_EFFECTIVE = 1e12
+LEAST_EVENTS = 1e-6
+
 
 @dataclass(frozen=True, kw_only=True)
 class Estimate:
@@ -77,8 +80,11 @@ def bounded_mean(total: float, total_of_squares: float, n: int, level=0.95) -> E
     variance = max(total_of_squares / n - mean**2, 0.0) * n / max(n - 1, 1)
     effective = float(n)
     if variance > 0 and 0 < mean < 1:
-        effective = max(n, n * mean * (1 - mean) / variance)
-    binomial = fraction_exact(mean * effective, effective, level)
+        effective = min(max(n, n * mean * (1 - mean) / variance), MOST_EFFECTIVE)
+    successes = mean * effective
+    if min(successes, effective - successes) < LEAST_EVENTS:  # beyond what beta quantiles resolve: none at all
+        successes = round(mean) * effective
+    binomial = fraction_exact(successes, effective, level)
     return Estimate(
         value=mean, low=binomial.low, high=binomial.high, level=level, n=n, method="exact binomial at effective n"
     )

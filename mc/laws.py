@@ -91,7 +91,10 @@ class Empirical:
     values: tuple[float, ...]
 
     def __post_init__(self):
-        _require(len(self.values) >= 2 and np.all(np.isfinite(self.values)), "an empirical law needs two finite values or more")
+        _require(
+            len(self.values) >= 2 and np.all(np.isfinite(self.values)),
+            "an empirical law needs two finite values or more",
+        )
         object.__setattr__(self, "values", tuple(sorted(float(value) for value in self.values)))
 
     def from_normal(self, z):

@@ -28,7 +28,7 @@ class Grid:
     def from_pilot(cls, values) -> "Grid":
         """Grid from a pilot's outputs, shape (outputs, n). An output that does not vary gets a tiny scale."""
         center = values.mean(axis=1)
-        floor = np.maximum(1e-9 * np.abs(center), np.finfo(float).tiny**0.5)
+        floor = np.maximum(1e-9 * np.abs(center), np.finfo(float).tiny ** 0.5)
         return cls(center=center, scale=np.maximum(values.std(axis=1), floor))
 
 

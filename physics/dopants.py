@@ -50,9 +50,7 @@ def weighted_count(profile: Profile, depletion_width, width, length, power, frin
     """
     per_length = width * profile.weighted_dopants(depletion_width, power)
     if fringe_shape:
-        per_length = per_length + fringe_weighted_dopants(
-            profile.surface_doping, depletion_width, fringe_shape, power
-        )
+        per_length = per_length + fringe_weighted_dopants(profile.surface_doping, depletion_width, fringe_shape, power)
     return per_length * length
 
 

@@ -6,7 +6,9 @@ Each function averages a roughness over one device; all give one device, never a
 import numpy as np
 from scipy.special import erf
 
-VORONOI_AREA_FACTOR = 1.280  # E[A^2]/E[A]^2 of planar Poisson-Voronoi cells; E. N. Gilbert, Ann. Math. Stat. 33, 958 (1962) (memory)
+VORONOI_AREA_FACTOR = (
+    1.280  # E[A^2]/E[A]^2 of planar Poisson-Voronoi cells; E. N. Gilbert, Ann. Math. Stat. 33, 958 (1962) (memory)
+)
 
 
 def exponential_averaging(ratio):

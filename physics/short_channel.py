@@ -37,7 +37,9 @@ def charge_sharing_factor(depletion_width, length, junction_depth):
     """
     reach = charge_sharing_reach(depletion_width, junction_depth)
     if np.any(length < 2 * reach):
-        raise ChannelTooShort("the charge-sharing trapezoid has closed: the channel is shorter than twice the reach of a junction")
+        raise ChannelTooShort(
+            "the charge-sharing trapezoid has closed: the channel is shorter than twice the reach of a junction"
+        )
     return 1 - reach / length
 
 

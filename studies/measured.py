@@ -24,7 +24,9 @@ def read_column(path: Path, column: str) -> tuple[float, ...]:
         except (TypeError, ValueError):
             value = float("nan")
         if not abs(value) < float("inf"):
-            raise InputError(f"{where}: line {line}, {one_line(column)} = {one_line(repr(text))}: a finite number is needed")
+            raise InputError(
+                f"{where}: line {line}, {one_line(column)} = {one_line(repr(text))}: a finite number is needed"
+            )
         values.append(value)
     if len(values) < 2:
         raise InputError(f"{where}: column '{one_line(column)}' needs two values or more")

@@ -26,6 +26,7 @@ from studies.units import si
 from studies.variation import RandomInput, copula, random_inputs
 
 Draws = Mapping[str, np.ndarray]
+SILICON_CAUSES = ("oxide_thickness", "doping", "flat_band")  # what `Population.silicon` reads
 MOBILITY_EXPONENT = -1.5  # phonon-limited mobility against temperature; common practice
 
 
@@ -52,6 +53,7 @@ class Population:
         self.copula: Copula = copula(file)
         self.nominal = nominal_device(file, device, body_bias_v=body_bias_v, temperature_c=temperature_c)
         self._varied = {cause: self._inputs_of(cause) for cause in {item.cause for item in self.inputs if item.law}}
+        self.silicon_inputs = frozenset(item.name for item in self.inputs if item.cause in SILICON_CAUSES)
         self._scatter = {item.cause: item.name for item in self.inputs if not item.law}
 
     def _inputs_of(self, cause):
@@ -59,9 +61,7 @@ class Population:
 
     def names(self, *, level: str | None = None, cause: str | None = None) -> tuple[str, ...]:
         """Names of the random inputs: all, those of one level, those of one cause."""
-        return tuple(
-            item.name for item in self.inputs if level in (None, item.level) and cause in (None, item.cause)
-        )
+        return tuple(item.name for item in self.inputs if level in (None, item.level) and cause in (None, item.cause))
 
     def geometry(self, width_um: float, length_um: float) -> Geometry:
         """A drawn width and length; raises InputError, see `make_geometry`."""
@@ -115,9 +115,7 @@ class Population:
         capacitance = oxide_capacitance(device.oxide_thickness)
         sigma = dopants.dopant_sigma(*place, capacitance, geometry.fringe_shape)
         if geometry.counted is not None:
-            normal = geometry.counted.standardised(
-                normal, dopants.weighted_count(*place, 0, geometry.fringe_shape)
-            )
+            normal = geometry.counted.standardised(normal, dopants.weighted_count(*place, 0, geometry.fringe_shape))
         return device.polarity * sigma * normal
 
     def thresholds(self, draws: Draws, geometry: Geometry, silicon: Silicon, drain_voltage: float):

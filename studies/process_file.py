@@ -91,7 +91,11 @@ class Spread(Record):
         if (self.law == "truncated normal") != (self.cut_sigmas is not None):
             raise ValueError("'cut_sigmas' and law = \"truncated normal\" go together")
         empirical = [self.values_csv, self.values_column, self.values_level]
-        if any(item is not None for item in empirical) != (self.law == "empirical") or None in empirical and any(empirical):
+        if (
+            any(item is not None for item in empirical) != (self.law == "empirical")
+            or None in empirical
+            and any(empirical)
+        ):
             raise ValueError('law = "empirical" needs values_csv, values_column and values_level, and they need it')
         return self
 
@@ -233,7 +237,9 @@ class Device(Record):
         if self.short_channel.kind == "charge sharing" and self.junction_depth_nm is None:
             raise ValueError("short_channel.kind = \"charge sharing\" needs 'junction_depth_nm'")
         if self.scatter.fringe_dopants and (self.edge.kind != "field oxide" or self.scatter.dopants == "off"):
-            raise ValueError('scatter.fringe_dopants = true needs edge.kind = "field oxide" and dopants that are not "off"')
+            raise ValueError(
+                'scatter.fringe_dopants = true needs edge.kind = "field oxide" and dopants that are not "off"'
+            )
         return self
 
 
@@ -275,7 +281,9 @@ class ProcessFile:
     def device(self, name: str) -> Device:
         """A device by name. Raises InputError that names the known ones."""
         if name not in self.process.device:
-            raise InputError(f"{one_line(self.path)}: device '{one_line(name)}' is not there; {nearest(name, self.process.device)}")
+            raise InputError(
+                f"{one_line(self.path)}: device '{one_line(name)}' is not there; {nearest(name, self.process.device)}"
+            )
         return self.process.device[name]
 
 

@@ -94,6 +94,11 @@ def copula(file: ProcessFile) -> Copula:
     pairs = []
     for number, entry in enumerate(file.process.correlation):
         for name in entry.inputs:
+            if name.endswith(".device"):
+                raise InputError(
+                    f"{one_line(file.path)}: correlation.{number}.inputs: '{one_line(name)}': neighbouring devices are "
+                    "independent here; lot, wafer and die levels can be correlated"
+                )
             if name not in known:
                 raise InputError(
                     f"{one_line(file.path)}: correlation.{number}.inputs: '{one_line(name)}' does not vary; {nearest(name, known)}"

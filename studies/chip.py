@@ -1,0 +1,121 @@
+"""A chip of many equal paths: what one die does to the delay of its paths, by conditioning.
+
+Given a die, the stages of a path are independent, so the cumulants of their delays add. A path of N stages, launched
+by either edge, is pulled by n and p devices in turn: ceil(N/2) of one and floor(N/2) of the other. The two edges meet
+different devices, so a chip has 2 P independent path delays and passes a period T with F_a(T)^P F_b(T)^P.
+
+Approximations: a stage's load is that of its die's mean devices (the scatter of single gates averages over the fan-out
+and both devices); the delay's dependence on single local causes is taken one at a time (`mc.cumulants`).
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.special import log_ndtr
+
+from mc.cumulants import NODES, additive_cumulants, score_from_value, score_of_largest, standardise, value_from_score
+from physics.gate_delay import effective_drive_current, gate_capacitance, stage_delay
+from physics.threshold import oxide_capacitance
+from studies.geometry import Geometry
+from studies.population import Population, Silicon
+from studies.units import si
+
+
+@dataclass(frozen=True, kw_only=True)
+class Side:
+    """One of the two devices of a stage."""
+
+    population: Population
+    geometry: Geometry
+
+
+@dataclass(frozen=True, kw_only=True)
+class Stage:
+    """An inverting stage and the path it stands in.
+
+    pull_down, pull_up : the n and the p device
+    stages : per path [1]; fan_out : gates driven by each stage [1]
+    wire_capacitance : per stage [F]; supply : [V]
+    """
+
+    pull_down: Side
+    pull_up: Side
+    stages: int
+    fan_out: float
+    wire_capacitance: float
+    supply: float
+
+    @property
+    def sides(self) -> tuple[Side, Side]:
+        """Both devices, the n one first."""
+        return self.pull_down, self.pull_up
+
+    @property
+    def evaluations_per_die(self) -> int:
+        """Device evaluations that one die costs."""
+        return sum(1 + NODES * len(side.population.names(level="device")) for side in self.sides)
+
+    def load(self, die) -> np.ndarray:
+        """Load of a stage on every die [F]. die : draws above device level, each (dies,)."""
+        total = self.wire_capacitance
+        for side in self.sides:
+            population, geometry = side.population, side.geometry
+            device = population.devices(die, geometry, population.silicon(die))
+            gate = gate_capacitance(
+                oxide_capacitance(device.oxide_thickness),
+                device.width,
+                device.length,
+                si(population.record, "overlap_capacitance_ff_per_um"),
+            )
+            junction = si(population.record, "junction_capacitance_ff_per_um") * geometry.drawn_width
+            total = total + self.fan_out * gate + junction
+        return total
+
+    def delay(self, side: Side, draws, silicon: Silicon, load) -> np.ndarray:
+        """Delay of a stage pulled by one side [s]; draws and load broadcast."""
+        half, full = side.population.channels(draws, side.geometry, silicon, (self.supply / 2, self.supply))
+        return stage_delay(load, self.supply, effective_drive_current(half, full, self.supply))
+
+    def stage_cumulants(self, side: Side, die, load) -> np.ndarray:
+        """First four cumulants of a stage's delay on every die, shape (4, dies) [s, s^2, s^3, s^4]."""
+        population = side.population
+        die_silicon = population.silicon(die)
+
+        def model(local):
+            draws = {**die, **local}
+            silicon = population.silicon(draws) if population.silicon_inputs & set(local) else die_silicon
+            return self.delay(side, draws, silicon, load)
+
+        return additive_cumulants(model, population.names(level="device"))
+
+    def path_cumulants(self, die) -> list[np.ndarray]:
+        """Cumulants of a path's delay on every die, shape (4, dies), for each of the two launching edges."""
+        load = self.load(die)
+        down, up = (self.stage_cumulants(side, die, load) for side in self.sides)
+        many, few = (self.stages + 1) // 2, self.stages // 2
+        return [many * down + few * up, few * down + many * up]
+
+
+def slowest_path(path_cumulants, normals, paths: int) -> np.ndarray:
+    """Delay of each chip's slowest path [s].
+
+    path_cumulants : see `Stage.path_cumulants`; normals : one standard normal a chip for each edge; paths : P
+    """
+    slowest = []
+    for cumulants, normal in zip(path_cumulants, normals):
+        mean, sigma, skew, excess = standardise(cumulants)
+        slowest.append(mean + sigma * value_from_score(score_of_largest(normal, paths), skew, excess))
+    return np.maximum(*slowest)
+
+
+def pass_probability(path_cumulants, period, paths: int) -> np.ndarray:
+    """Probability that a chip on each die meets a period.
+
+    period : [s], broadcasts with (dies,); paths : P
+    Returns probability [1] of the broadcast shape.
+    """
+    log_probability = 0.0
+    for cumulants in path_cumulants:
+        mean, sigma, skew, excess = standardise(cumulants)
+        log_probability = log_probability + paths * log_ndtr(score_from_value((period - mean) / sigma, skew, excess))
+    return np.exp(log_probability)

@@ -1,0 +1,94 @@
+"""Sentences and notes of the answers, for a designer who does not know the model."""
+
+import numpy as np
+
+from physics.edges import FieldOxide, TabulatedEdge, Trench
+from physics.short_channel import LongChannel, QuasiTwoDimensional
+from studies.population import Population
+
+CAUTION = (
+    "Planning estimates. Sign-off belongs to the foundry's qualified models, to silicon data and to the people "
+    "responsible, above all where a failing part could hurt someone."
+)
+QUARTER_CIRCLES = np.pi / 2
+
+
+def edge_note(population: Population) -> str:
+    """How far the edge's closed form can be trusted."""
+    edge = population.nominal.edge
+    if isinstance(edge, FieldOxide):
+        note = f"Edge: field oxide, closed form with shape {edge.shape:.3g}."
+        if edge.shape > 0.5 * QUARTER_CIRCLES:
+            return note + (
+                " Quarter circles (1.57) are an upper bound: for a flat surface with an abrupt step and no field implant "
+                "a field solution gives a tenth to a fifth of that shift. Measure two widths, or lower the shape."
+            )
+        return note + " The shape is a guess about geometry until two widths have been measured."
+    if isinstance(edge, Trench):
+        return "Edge: trench, closed form; a field solution confirms its shift to 10 to 20 %."
+    if isinstance(edge, TabulatedEdge):
+        return "Edge: the table's factors, interpolated smoothly; as good as the table."
+    return "Edge: none. The width effect on the mean threshold is left out."
+
+
+def model_notes(population: Population) -> list[str]:
+    """Which approximations were used."""
+    notes = [edge_note(population)]
+    kind = population.nominal.short_channel
+    if isinstance(kind, LongChannel):
+        notes.append("Length: no short-channel effect; gate-edge roughness then moves currents but not thresholds.")
+    else:
+        name = "quasi-two-dimensional" if isinstance(kind, QuasiTwoDimensional) else "charge sharing (Yau)"
+        notes.append(f"Length: {name}; the factors of width and length are multiplied, an approximation.")
+    scatter = population.record.scatter
+    if scatter.fringe_dopants:
+        notes.append("Dopants: the fringe's own are counted too (fringe_dopants): an upper bound.")
+    elif scatter.dopants == "off":
+        notes.append("Dopants: switched off. The scatter of narrow devices is understated.")
+    if scatter.remainder_pair_mv_um == 0:
+        notes.append("No measured remainder is given: real pairs scatter more than the modelled causes alone.")
+    return notes
+
+
+def spread_sentences(device: str, answer_rows) -> tuple[str, ...]:
+    """The spread in words. answer_rows : rows of spread.csv, narrowest first, as dictionaries."""
+    first, last = answer_rows[0], answer_rows[-1]
+    causes = {
+        name: first[name] for name in first if name.startswith("share_") and "level" not in name and "sum" not in name
+    }
+    largest = max(causes, key=causes.get)
+    sentence = (
+        f"Device {device}, W = {first['width_um']:g} um: sigma(Vth) {first['vth_sigma_mv']:.2f} mV "
+        f"[{first['vth_sigma_low_mv']:.2f}, {first['vth_sigma_high_mv']:.2f}]; the largest cause is "
+        f"{largest.removeprefix('share_').replace('_', ' ')} with {100 * causes[largest]:.0f} % of the variance."
+    )
+    sentences = [sentence]
+    if len(answer_rows) > 1:
+        shift = 1e3 * (first["vth_nominal_v"] - first["vth_nominal_without_edges_v"])
+        sentences.append(f"The edges move its nominal threshold by {shift:+.1f} mV.")
+        if first.get("vth_device_sigma_area_law_mv"):
+            departure = 100 * (first["vth_device_sigma_mv"] / first["vth_device_sigma_area_law_mv"] - 1)
+            sentences[-1] += (
+                f" Its local sigma is {departure:+.1f} % off the 1/sqrt(W L) line laid from W = {last['width_um']:g} um."
+            )
+    return tuple(sentences)
+
+
+def timing_sentences(question, rows, min_width) -> tuple[str, ...]:
+    """The timing answer in words. rows : rows of timing.csv, narrowest first, as dictionaries."""
+    target = f"{100 * question.target_yield:g} % of chips within {question.period_ps:g} ps"
+    last = rows[-1]
+    if not np.isfinite(min_width.value):
+        return (
+            f"Cannot be met: {target} is not reached at any width up to W = {last['width_um']:g} um, where the yield is "
+            f"{100 * last['yield']:.2f} % [{100 * last['yield_low']:.2f}, {100 * last['yield_high']:.2f}].",
+            f"That width needs a period of {last['period_at_target_ps']:.1f} ps "
+            f"[{last['period_at_target_low_ps']:.1f}, {last['period_at_target_high_ps']:.1f}].",
+        )
+    if min_width.value == question.width_um[0]:
+        return (f"{target}: every width asked for meets it, the narrowest (W = {question.width_um[0]:g} um) included.",)
+    high = f"{min_width.high:.4g}" if np.isfinite(min_width.high) else "beyond the widths asked for"
+    return (
+        f"{target}: the smallest width is W = {min_width.value:.4g} um [{min_width.low:.4g}, {high}], interpolated "
+        "between the widths asked for.",
+    )

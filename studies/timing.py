@@ -1,0 +1,252 @@
+"""Which share of chips meets a clock period at each width, and which period or width a target yield needs.
+
+Dies are sampled; given a die the rest is computed (`studies.chip`). All widths see the same dies.
+"""
+
+from dataclasses import dataclass
+from functools import partial
+from time import perf_counter
+from typing import Annotated
+
+import numpy as np
+import pandas as pd
+from pydantic import Field
+from scipy.special import ndtr, ndtri
+
+from mc.experiment import Inputs
+from mc.intervals import Estimate, Summary, bounded_mean
+from mc.plan import Block
+from mc.runner import Progress, run
+from mc.search import first_crossing
+from mc.tally import Grid, Moments
+from studies.answer import Answer, columns_of, make_plan
+from studies.chip import Side, Stage, pass_probability, slowest_path
+from studies.errors import InputError, one_line
+from studies.notes import model_notes, timing_sentences
+from studies.population import Population
+from studies.process_file import LEVELS, ProcessFile
+from studies.question import WidthQuestion
+from studies.settings import Settings, Workers
+from studies.units import SUFFIXES
+
+BLOCK = 2048
+SLICE = 256  # dies at once; each is evaluated at some two hundred places
+DEFAULT_SAMPLES = 16384
+SLOWEST = ("slowest.edge_a.chip", "slowest.edge_b.chip")  # one standard normal a chip and edge
+PERIOD_GRID = np.linspace(-8, 16, 97)  # in pilot sigmas of the slowest path
+
+
+class Question(WidthQuestion):
+    """Timing yield of chips with many equal paths against width, and the period or width a target yield needs."""
+
+    period_ps: Annotated[float, Field(gt=0)]
+    """clock period"""
+    paths: Annotated[int, Field(ge=1, le=10**9)]
+    """paths per chip, all equal"""
+    stages: Annotated[int, Field(ge=2, le=10000)]
+    """inverting stages per path"""
+    supply_v: Annotated[float, Field(gt=0, le=100)]
+    """supply voltage"""
+    fan_out: Annotated[float, Field(gt=0, le=100)] = 3.0
+    """gates driven by each stage"""
+    wire_capacitance_ff: Annotated[float, Field(ge=0)] = 0.0
+    """wire per stage"""
+    width_ratio: Annotated[float, Field(gt=0, le=20)] = 2.0
+    """p width over n width; width_um is that of the n device"""
+    target_yield: Annotated[float, Field(gt=0, lt=1)] = 0.99
+    """yield to be met"""
+    n_device: str = "n"
+    """device that pulls down"""
+    p_device: str = "p"
+    """device that pulls up"""
+
+
+@dataclass(frozen=True, kw_only=True)
+class TimingTally:
+    """Sums over dies: pass probabilities and their squares, shape (widths, periods), and the slowest path's moments."""
+
+    passes: np.ndarray
+    squares: np.ndarray
+    slowest: Moments
+
+    def __add__(self, other):
+        return TimingTally(
+            passes=self.passes + other.passes,
+            squares=self.squares + other.squares,
+            slowest=self.slowest + other.slowest,
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Chips:
+    """Task for the runner: tally a block of dies.
+
+    stages : one per width; paths : per chip; inputs : die-level inputs and SLOWEST
+    grid : of the slowest path [s]; periods : shape (widths, periods) [s]
+    """
+
+    stages: tuple[Stage, ...]
+    paths: int
+    inputs: Inputs
+    grid: Grid
+    periods: np.ndarray
+
+    def __call__(self, block: Block) -> TimingTally:
+        passes, squares = np.zeros_like(self.periods), np.zeros_like(self.periods)
+        slowest = []
+        for die in self.inputs.slices(block):
+            rows = []
+            for row, stage in enumerate(self.stages):
+                cumulants = stage.path_cumulants(die)
+                rows.append(slowest_path(cumulants, [die[name] for name in SLOWEST], self.paths))
+                passed = pass_probability(cumulants, self.periods[row][:, None], self.paths)
+                passes[row] += passed.sum(axis=1)
+                squares[row] += (passed * passed).sum(axis=1)
+            slowest.append(np.array(rows))
+        return TimingTally(passes=passes, squares=squares, slowest=Moments.of(self.grid, slowest))
+
+
+def answer(
+    question: Question, file: ProcessFile, settings: Settings, workers: Workers, progress: Progress = lambda *_: None
+) -> Answer:
+    """Answer a timing question. Raises InputError where the physics has no answer."""
+    started = perf_counter()
+    chips = prepare(question, file, settings)
+    plan = make_plan(settings, default_samples=DEFAULT_SAMPLES, block_size=BLOCK)
+    tally, samples = run(
+        chips,
+        plan,
+        half_width=lambda tally: max(
+            (estimate.high - estimate.low) / 2 for estimate in _yields_at_period(tally, len(chips.stages))
+        ),
+        jobs=workers.jobs,
+        backend=workers.backend,
+        progress=progress,
+    )
+    yields = _yields_at_period(tally, len(chips.stages))
+    periods = [_period_at(tally, chips, row, question.target_yield) for row in range(len(chips.stages))]
+    min_width = _smallest_width(question, yields)
+    table = _table(question, file, tally, yields, periods)
+    met = bool(np.isfinite(min_width.value))
+    headlines = {"min_width_um": min_width}
+    headlines |= {f"yield at width_um {width:g}": mine for width, mine in zip(question.width_um, yields)}
+    headlines |= {f"period_at_target_ps at width_um {width:g}": mine for width, mine in zip(question.width_um, periods)}
+    return Answer(
+        kind="timing",
+        process=file.name,
+        question=question.model_dump(),
+        table=table,
+        headlines=headlines,
+        sentences=timing_sentences(question, table.to_dict("records"), min_width),
+        notes=tuple(note for side in chips.stages[0].sides for note in model_notes(side.population)),
+        samples=samples,
+        evaluations=samples * sum(stage.evaluations_per_die for stage in chips.stages),
+        seconds=perf_counter() - started,
+        met=met,
+    )
+
+
+def prepare(question: Question, file: ProcessFile, settings: Settings) -> Chips:
+    """The task of a question: populations, geometries, and the period grid from a pilot of dies."""
+    stages = _stages(question, file)
+    populations = [side.population for side in stages[0].sides]
+    names = tuple(name for each in populations for level in LEVELS[:-1] for name in each.names(level=level))
+    inputs = Inputs(seed=settings.seed, names=(*names, *SLOWEST), copula=populations[0].copula, slice_size=SLICE)
+    die = next(inputs.slices(Block(0, BLOCK)))
+    normals = [die[name] for name in SLOWEST]
+    pilot = np.array([slowest_path(stage.path_cumulants(die), normals, question.paths) for stage in stages])
+    if not np.all(np.isfinite(pilot)):
+        raise InputError(f"{one_line(file.path)}: supply_v = {question.supply_v:g}: the stages do not switch")
+    grid = Grid.from_pilot(pilot)
+    periods = grid.center[:, None] + grid.scale[:, None] * PERIOD_GRID
+    asked = np.full((len(stages), 1), question.period_ps * SUFFIXES["ps"])
+    return Chips(stages=stages, paths=question.paths, inputs=inputs, grid=grid, periods=np.hstack([asked, periods]))
+
+
+def _stages(question: Question, file: ProcessFile) -> tuple[Stage, ...]:
+    populations = []
+    for key, channel in (("n_device", "n"), ("p_device", "p")):
+        name = getattr(question, key)
+        population = Population(file, name, temperature_c=question.temperature_c)
+        if population.record.channel != channel:
+            raise InputError(f'{population.where}.channel: {key} needs a device with channel = "{channel}"')
+        if population.record.mobility_cm2_per_vs is None:
+            raise InputError(f"{population.where}: timing needs 'mobility_cm2_per_vs'")
+        if not population.names(level="device"):
+            raise InputError(f"{population.where}.scatter: timing needs some scatter between devices")
+        populations.append(population)
+    pull_down, pull_up = populations
+    return tuple(
+        Stage(
+            pull_down=Side(population=pull_down, geometry=pull_down.geometry(width, question.length_um)),
+            pull_up=Side(
+                population=pull_up, geometry=pull_up.geometry(width * question.width_ratio, question.length_um)
+            ),
+            stages=question.stages,
+            fan_out=question.fan_out,
+            wire_capacitance=question.wire_capacitance_ff * SUFFIXES["ff"],
+            supply=question.supply_v,
+        )
+        for width in question.width_um
+    )
+
+
+def _yield(tally: TimingTally, row: int, column: int) -> Estimate:
+    return bounded_mean(float(tally.passes[row, column]), float(tally.squares[row, column]), tally.slowest.count)
+
+
+def _yields_at_period(tally: TimingTally, widths: int) -> list[Estimate]:
+    return [_yield(tally, row, 0) for row in range(widths)]
+
+
+def _period_at(tally: TimingTally, chips: Chips, row: int, target: float) -> Estimate:
+    """Period at which the yield, interpolated on the probit scale, meets the target; bounds where its bounds do."""
+    columns = range(1, chips.periods.shape[1])
+    estimates = [_yield(tally, row, column) for column in columns]
+    crossing = partial(_probit_crossing, chips.periods[row, 1:] / SUFFIXES["ps"], target)
+    return Estimate(
+        value=crossing([estimate.value for estimate in estimates]),
+        low=crossing([estimate.high for estimate in estimates]),
+        high=crossing([estimate.low for estimate in estimates]),
+        level=estimates[0].level,
+        n=estimates[0].n,
+        method="crossing of the yield and its bounds",
+    )
+
+
+def _probit_crossing(places, target: float, yields) -> float:
+    clipped = np.clip(yields, ndtr(-37.0), ndtr(8.0))
+    found = first_crossing(places, ndtri(clipped), ndtri(target))
+    return np.inf if np.isnan(found) else found
+
+
+def _smallest_width(question: Question, yields: list[Estimate]) -> Estimate:
+    """Smallest width that meets the target, interpolated between the widths asked for on the probit scale."""
+    crossing = partial(_probit_crossing, question.width_um, question.target_yield)
+    return Estimate(
+        value=crossing([each.value for each in yields]),
+        low=crossing([each.high for each in yields]),
+        high=crossing([each.low for each in yields]),
+        level=yields[0].level,
+        n=yields[0].n,
+        method="crossing of the yield and its bounds, interpolated between widths",
+    )
+
+
+def _table(question: Question, file: ProcessFile, tally: TimingTally, yields, periods) -> pd.DataFrame:
+    picoseconds = 1 / SUFFIXES["ps"]
+    rows = []
+    for row, width in enumerate(question.width_um):
+        slowest = Summary(tally.slowest, row)
+        mean, sigma = slowest.mean().scaled(picoseconds), slowest.sigma().scaled(picoseconds)
+        rows.append(
+            {"process": file.name, "width_um": width, "period_ps": question.period_ps}
+            | columns_of("yield", yields[row])
+            | {"slowest_mean_ps": mean.value, "slowest_sigma_ps": sigma.value}
+            | {"period_at_target_ps": periods[row].value}
+            | {"length_um": question.length_um, "target_yield": question.target_yield, "samples": slowest.n}
+            | {"slowest_mean_low_ps": mean.low, "slowest_mean_high_ps": mean.high}
+            | {"slowest_sigma_low_ps": sigma.low, "slowest_sigma_high_ps": sigma.high}
+            | {"period_at_target_low_ps": periods[row].low, "period_at_target_high_ps": periods[row].high}
+        )
+    return pd.DataFrame(rows)
