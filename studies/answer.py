@@ -26,6 +26,7 @@ class Answer:
     notes : approximations used and warnings, in words
     met : False when a target that was asked for cannot be met
     samples : samples used
+    block_size : samples per block
     evaluations : devices evaluated
     seconds : wall time
     """
@@ -38,6 +39,7 @@ class Answer:
     sentences: tuple[str, ...]
     notes: tuple[str, ...]
     samples: int
+    block_size: int
     evaluations: int
     seconds: float
     met: bool = True

@@ -50,7 +50,7 @@ def model_notes(population: Population) -> list[str]:
     return notes
 
 
-def spread_sentences(device: str, answer_rows) -> tuple[str, ...]:
+def spread_sentences(answer_rows) -> tuple[str, ...]:
     """The spread in words. answer_rows : rows of spread.csv, narrowest first, as dictionaries."""
     first, last = answer_rows[0], answer_rows[-1]
     causes = {
@@ -58,7 +58,7 @@ def spread_sentences(device: str, answer_rows) -> tuple[str, ...]:
     }
     largest = max(causes, key=causes.get)
     sentence = (
-        f"Device {device}, W = {first['width_um']:g} um: sigma(Vth) {first['vth_sigma_mv']:.2f} mV "
+        f"{first['process']}, device {first['device']}, W = {first['width_um']:g} um: sigma(Vth) {first['vth_sigma_mv']:.2f} mV "
         f"[{first['vth_sigma_low_mv']:.2f}, {first['vth_sigma_high_mv']:.2f}]; the largest cause is "
         f"{largest.removeprefix('share_').replace('_', ' ')} with {100 * causes[largest]:.0f} % of the variance."
     )
@@ -76,7 +76,7 @@ def spread_sentences(device: str, answer_rows) -> tuple[str, ...]:
 
 def timing_sentences(question, rows, min_width) -> tuple[str, ...]:
     """The timing answer in words. rows : rows of timing.csv, narrowest first, as dictionaries."""
-    target = f"{100 * question.target_yield:g} % of chips within {question.period_ps:g} ps"
+    target = f"{rows[0]['process']}, {100 * question.target_yield:g} % of chips within {question.period_ps:g} ps"
     last = rows[-1]
     if not np.isfinite(min_width.value):
         return (

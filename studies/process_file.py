@@ -286,6 +286,15 @@ class ProcessFile:
             )
         return self.process.device[name]
 
+    def measured_files(self) -> list[Path]:
+        """Files of measured values that the process refers to."""
+        return [
+            self.path.parent / spread.values_csv
+            for device in self.process.device.values()
+            for _, spread in device.variation
+            if spread.values_csv is not None
+        ]
+
 
 def load_process(path, name: str | None = None) -> ProcessFile:
     """The process option in a file. Raises InputError in one line."""

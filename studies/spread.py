@@ -122,9 +122,10 @@ def answer(
             f"vth_sigma_mv at width_um {width:g}": Summary(tally, row).sigma().scaled(1e3)
             for row, width in enumerate(question.width_um)
         },
-        sentences=spread_sentences(question.device, table.to_dict("records")),
+        sentences=spread_sentences(table.to_dict("records")),
         notes=tuple(model_notes(population)),
         samples=samples,
+        block_size=BLOCK,
         evaluations=len(geometries) * (samples + share_plan.samples * len(groups)),
         seconds=perf_counter() - started,
     )

@@ -140,6 +140,7 @@ def answer(
         sentences=timing_sentences(question, table.to_dict("records"), min_width),
         notes=tuple(note for side in chips.stages[0].sides for note in model_notes(side.population)),
         samples=samples,
+        block_size=BLOCK,
         evaluations=samples * sum(stage.evaluations_per_die for stage in chips.stages),
         seconds=perf_counter() - started,
         met=met,

@@ -1,0 +1,203 @@
+"""Figures. A function takes an Axes, draws, and returns it.
+
+Spread of transistors is a filled band or a bar; uncertainty of a number is a thin line with caps. The legends say which.
+"""
+
+from io import BytesIO
+from typing import Any
+
+import matplotlib
+
+matplotlib.use("Agg")
+
+import matplotlib.pyplot as plt
+import numpy as np
+import seaborn as sns
+from matplotlib.ticker import FuncFormatter, NullFormatter
+
+from studies.answer import Answer
+from studies.job import Job
+
+PALETTE = sns.color_palette("colorblind", 10)
+SPREAD, NUMBER, REFERENCE = PALETTE[0], "black", PALETTE[1]
+HATCHES = ["", "//", "..", "\\\\", "xx", "--", "++", "oo", "**", "||"]
+
+
+def width_axis(axes, widths):
+    """Logarithmic width axis with the asked widths as ticks, thinned where they would touch."""
+    axes.set_xscale("log")
+    widths = list(widths)
+    apart = (widths[-1] / widths[0]) ** 0.09  # labels need about a tenth of the axis
+    ticks = widths[:1]
+    for width in widths:
+        if width > apart * ticks[-1]:
+            ticks.append(width)
+    axes.set_xticks(ticks)
+    axes.xaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axes.xaxis.set_minor_formatter(NullFormatter())
+    axes.minorticks_off()
+    axes.set_xlabel("drawn width (um)")
+    return axes
+
+
+def with_interval(axes, table, name: str, unit: str, *, label: str, color=NUMBER, scale=1.0, marker="o"):
+    """A curve of a number against width with its 95 % interval as caps."""
+    value, low, high = (table[f"{name}{part}{unit}"] * scale for part in ("", "_low", "_high"))
+    finite = np.isfinite(low) & np.isfinite(high)
+    bars = [np.where(finite, value - low, 0), np.where(finite, high - value, 0)]
+    axes.errorbar(table.width_um, value, yerr=bars, color=color, marker=marker, ms=4, lw=1.2, capsize=4, label=label)
+    return axes
+
+
+def threshold_against_width(axes, table):
+    """Mean threshold, the band that holds 99.8 % of transistors, and the nominal curves."""
+    axes.fill_between(
+        table.width_um,
+        1e3 * table.vth_p0_1_v,
+        1e3 * table.vth_p99_9_v,
+        color=SPREAD,
+        alpha=0.25,
+        lw=0,
+        label="spread: 99.8 % of transistors",
+    )
+    with_interval(axes, table, "vth_mean", "_v", label="mean, 95 % interval", scale=1e3)
+    axes.plot(
+        table.width_um,
+        1e3 * table.vth_nominal_without_edges_v,
+        color=REFERENCE,
+        ls="--",
+        label="nominal without edges",
+    )
+    width_axis(axes, table.width_um)
+    axes.set_ylabel("threshold voltage (mV)")
+    axes.legend(frameon=False)
+    return axes
+
+
+def sigma_against_width(axes, table):
+    """Sigma of all transistors and of neighbours, and the straight 1/sqrt(W L) line."""
+    with_interval(axes, table, "vth_sigma", "_mv", label="all transistors, 95 % interval")
+    if "vth_device_sigma_mv" in table:
+        with_interval(
+            axes, table, "vth_device_sigma", "_mv", label="neighbours, 95 % interval", color=SPREAD, marker="s"
+        )
+        axes.plot(
+            table.width_um,
+            table.vth_device_sigma_area_law_mv,
+            color=REFERENCE,
+            ls="--",
+            zorder=5,
+            label="1/sqrt(W L) from the widest",
+        )
+    width_axis(axes, table.width_um)
+    axes.set_yscale("log")
+    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axes.yaxis.set_minor_formatter(FuncFormatter(lambda value, _: f"{value:g}" if f"{value:e}"[0] in "235" else ""))
+    axes.set_ylabel("sigma of the threshold (mV)")
+    axes.legend(frameon=False)
+    return axes
+
+
+def shares_against_width(axes, shares, causes):
+    """Stacked shares of the variance; causes below 2 % everywhere are gathered."""
+    wide = shares[shares.part.isin(causes)].pivot(index="width_um", columns="part", values="share")
+    small = [part for part in wide if wide[part].max() < 0.02]
+    order = wide.drop(columns=small).mean().sort_values(ascending=False).index
+    stack = wide[list(order)].copy()
+    if small:
+        stack["others"] = wide[small].sum(axis=1)
+    places, bottom = np.arange(len(stack)), np.zeros(len(stack))
+    for number, part in enumerate(stack):
+        axes.bar(
+            places,
+            100 * stack[part],
+            bottom=bottom,
+            width=0.8,
+            color=PALETTE[number % 10],
+            hatch=HATCHES[number % 10],
+            edgecolor="white",
+            lw=0.4,
+            label=part.replace("_", " "),
+        )
+        bottom += 100 * stack[part].to_numpy()
+    axes.set_xticks(places, [f"{width:g}" for width in stack.index], rotation=90 if len(places) > 7 else 0)
+    axes.set_xlabel("drawn width (um)")
+    axes.set_ylabel("share of the variance (%)")
+    axes.axhline(100, color="black", lw=0.8)
+    handles, labels = axes.get_legend_handles_labels()
+    axes.legend(handles[::-1], labels[::-1], frameon=False, bbox_to_anchor=(1.0, 1.0), loc="upper left")
+    return axes
+
+
+def yield_against_width(axes, table):
+    """Timing yield at the period with its interval, and the target."""
+    with_interval(axes, table, "yield", "", label="timing yield, 95 % interval", scale=100)
+    target = 100 * table.target_yield.iloc[0]
+    axes.axhline(target, color=REFERENCE, ls="--", label=f"target {target:g} %")
+    width_axis(axes, table.width_um)
+    axes.set_ylabel(f"chips within {table.period_ps.iloc[0]:g} ps (%)")
+    axes.legend(frameon=False)
+    return axes
+
+
+def period_against_width(axes, table):
+    """Slowest path of the chips, and the period that meets the target."""
+    mean, sigma = table.slowest_mean_ps, table.slowest_sigma_ps
+    axes.fill_between(
+        table.width_um,
+        mean - sigma,
+        mean + sigma,
+        color=SPREAD,
+        alpha=0.25,
+        lw=0,
+        label="spread: slowest path, one sigma",
+    )
+    target = 100 * table.target_yield.iloc[0]
+    with_interval(axes, table, "period_at_target", "_ps", label=f"period for {target:g} %, 95 % interval")
+    axes.axhline(table.period_ps.iloc[0], color=REFERENCE, ls="--", label="period asked for")
+    width_axis(axes, table.width_um)
+    axes.set_ylabel("period (ps)")
+    axes.legend(frameon=False)
+    return axes
+
+
+def _draw_spread(answer: Answer):
+    figure, axes = plt.subplots(1, 3, figsize=(15, 4.6), width_ratios=(1, 1, 0.9))
+    threshold_against_width(axes[0], answer.table)
+    sigma_against_width(axes[1], answer.table)
+    shares = answer.tables["spread_shares"]
+    causes = [part for part in shares.part.unique() if not part.startswith("level_")]
+    shares_against_width(axes[2], shares, causes)
+    question = answer.question
+    return figure, f"{answer.process}, device {question['device']}, L = {question['length_um']:g} um"
+
+
+def _draw_timing(answer: Answer):
+    figure, axes = plt.subplots(1, 2, figsize=(11, 4.6))
+    yield_against_width(axes[0], answer.table)
+    period_against_width(axes[1], answer.table)
+    question = answer.question
+    return figure, f"{answer.process}: {question['paths']} paths of {question['stages']} stages"
+
+
+DRAWERS: dict[str, Any] = {"spread": _draw_spread, "timing": _draw_timing}
+
+
+def draw_all(job: Job, answers: list[Answer]) -> dict[str, bytes]:
+    """Every answer's figure as PNG and SVG, by file name."""
+    sns.set_theme(style="ticks", context="notebook")
+    files = {}
+    # a fixed salt and no date, so that the same answers give the same bytes
+    with matplotlib.rc_context({"svg.hashsalt": "widthwise", "svg.fonttype": "none"}):
+        for asked, answer in zip(job.asked, answers):
+            figure, title = DRAWERS[answer.kind](answer)
+            figure.suptitle(title.replace("$", r"\$"))
+            sns.despine(figure)
+            figure.tight_layout()
+            for kind in ("png", "svg"):
+                buffer = BytesIO()
+                metadata = {"Date": None} if kind == "svg" else None
+                figure.savefig(buffer, format=kind, dpi=110, metadata=metadata, bbox_inches="tight")
+                files[f"{asked.name}.{kind}"] = buffer.getvalue()
+            plt.close(figure)
+    return files

@@ -1,0 +1,14 @@
+"""The kinds of question, by name. Their modules are imported only when one is asked: they bring the heavy libraries."""
+
+from importlib import import_module
+from types import ModuleType
+
+SUMMARIES = {
+    "spread": "Threshold voltage against width: mean, sigma, skew, tails, and which cause contributes how much.",
+    "timing": "Timing yield of chips with many equal paths against width, and the period or width a target yield needs.",
+}
+
+
+def question_module(kind: str) -> ModuleType:
+    """Module of a kind of question; it has `Question` and `answer`. Kind: of SUMMARIES."""
+    return import_module(f"studies.{kind}")

@@ -1,0 +1,151 @@
+"""The output folder: tidy CSVs, figures, answers.json and record.json. All is computed before anything is written."""
+
+import json
+import math
+import os
+import platform
+from datetime import UTC, datetime
+from importlib.metadata import version
+from pathlib import Path
+
+import pandas as pd
+
+from studies import __version__
+from studies.answer import Answer
+from studies.errors import InputError, one_line
+from studies.job import Job
+from studies.notes import CAUTION
+from studies.settings import Workers
+
+RECORD = "record.json"
+LIBRARIES = ("numpy", "scipy", "pandas", "joblib", "pydantic")
+
+
+def check_folder(folder: Path, job: Job, replace: bool) -> None:
+    """Refuse a folder that is not one, cannot be written, or holds another job's results. Writes nothing.
+
+    Raises InputError.
+    """
+    where = one_line(folder)
+    if folder.exists() and not folder.is_dir():
+        raise InputError(f"{where}: is a file, a folder is needed")
+    parent = next(place for place in (folder, *folder.absolute().parents) if place.exists())
+    if not os.access(parent, os.W_OK):
+        raise InputError(f"{where}: cannot be written")
+    found = _old_record(folder)
+    if found is not None and found.get("fingerprint") != job.fingerprint() and not replace:
+        raise InputError(f"{where}: holds the results of another job; choose another folder or add --replace")
+
+
+def _old_record(folder: Path) -> dict | None:
+    try:
+        return json.loads((folder / RECORD).read_text(encoding="utf-8"))
+    except FileNotFoundError:
+        return None
+    except (OSError, ValueError):
+        return {}  # a record that cannot be read is another job's
+
+
+def plain(value):
+    """A value that JSON can hold; what is not finite becomes null."""
+    if isinstance(value, float):
+        return float(value) if math.isfinite(value) else None
+    if isinstance(value, dict):
+        return {key: plain(item) for key, item in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [plain(item) for item in value]
+    return value
+
+
+def answers_json(job: Job, answers: list[Answer]) -> dict:
+    """The headline numbers with their intervals, and what was said about them."""
+    return plain(
+        {
+            "title": job.title,
+            "caution": CAUTION,
+            "answers": [
+                {
+                    "name": asked.name,
+                    "kind": answer.kind,
+                    "process": answer.process,
+                    "question": dict(answer.question),
+                    "met": answer.met,
+                    "headlines": {name: vars(estimate) for name, estimate in answer.headlines.items()},
+                    "sentences": answer.sentences,
+                    "notes": answer.notes,
+                }
+                for asked, answer in zip(job.asked, answers)
+            ],
+        }
+    )
+
+
+def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[str]) -> dict:
+    """What is needed to repeat the answers."""
+    return plain(
+        {
+            "title": job.title,
+            "fingerprint": job.fingerprint(),
+            "written": datetime.now(UTC).isoformat(timespec="seconds"),
+            "settings": job.settings.model_dump(),
+            "workers": workers.model_dump(),
+            "questions": [
+                {
+                    "name": asked.name,
+                    "process_file": asked.file.path.name,
+                    "question": asked.question.model_dump(),
+                    "samples": answer.samples,
+                    "block_size": answer.block_size,
+                    "device_evaluations": answer.evaluations,
+                    "seconds": round(answer.seconds, 3),
+                }
+                for asked, answer in zip(job.asked, answers)
+            ],
+            "processes": {asked.file.name: asked.file.process.model_dump() for asked in job.asked},
+            "versions": {"widthwise": __version__, "python": platform.python_version()}
+            | {library: version(library) for library in LIBRARIES},
+            "files": files,
+        }
+    )
+
+
+def tables_of(answers: list[Answer]) -> dict[str, pd.DataFrame]:
+    """One tidy table per name, the answers' rows below each other."""
+    gathered: dict[str, list[pd.DataFrame]] = {}
+    for answer in answers:
+        for name, table in {answer.kind: answer.table, **answer.tables}.items():
+            gathered.setdefault(name, []).append(table)
+    return {name: pd.concat(tables, ignore_index=True) for name, tables in gathered.items()}
+
+
+def write(folder: Path, job: Job, answers: list[Answer], workers: Workers) -> list[str]:
+    """Write everything; each file appears whole or not at all, the record last. Returns the files' names.
+
+    Raises InputError when the disk does not take them.
+    """
+    from studies.figures import draw_all  # the drawing library is slow to import
+
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        for name in (_old_record(folder) or {}).get("files", []):
+            if Path(name).name == name:
+                (folder / name).unlink(missing_ok=True)
+        contents = {
+            f"{name}.csv": table.to_csv(index=False, lineterminator="\n").encode()
+            for name, table in tables_of(answers).items()
+        }
+        contents |= draw_all(job, answers)
+        contents["answers.json"] = _encoded(answers_json(job, answers))
+        files = [*contents, RECORD]
+        contents[RECORD] = _encoded(record_json(job, answers, workers, files))
+        for name, content in contents.items():
+            partial = folder / f".{name}.partial"
+            partial.write_bytes(content)
+            partial.replace(folder / name)
+    except OSError as error:
+        raise InputError(f"{one_line(folder)}: cannot be written ({error.strerror})") from None
+    return files
+
+
+def _encoded(content: dict) -> bytes:
+    return (json.dumps(content, indent=2, ensure_ascii=False) + "\n").encode()

@@ -1,0 +1,148 @@
+"""What a person reads without opening a file: tables of 80 columns, and progress on the error stream."""
+
+import sys
+from contextlib import contextmanager
+
+from rich.console import Console
+from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
+from rich.table import Table
+from rich.text import Text
+
+from studies.answer import Answer
+from studies.errors import one_line
+from studies.notes import CAUTION
+
+WIDTH = 80
+LARGEST_CAUSES = 4
+
+
+def console(stream=None) -> Console:
+    """Console that never takes text from a file for markup; 80 columns unless a terminal says otherwise."""
+    stream = stream or sys.stdout
+    width = None if stream.isatty() else WIDTH
+    return Console(file=stream, width=width, markup=False, highlight=False, emoji=False)
+
+
+def _plus_minus(row, name: str, unit: str, digits: int, scale=1.0) -> str:
+    value, low, high = (row[f"{name}{part}{unit}"] * scale for part in ("", "_low", "_high"))
+    return f"{value:.{digits}f} ±{max(high - value, value - low):.{digits}f}"
+
+
+def _bounds(row, name: str, unit: str, digits: int, scale=1.0) -> str:
+    value, low, high = (row[f"{name}{part}{unit}"] * scale for part in ("", "_low", "_high"))
+    return f"{value:.{digits}f} [{low:.{digits}f}, {high:.{digits}f}]"
+
+
+def _table(title: str, columns: list[str], rows: list[list[str]]) -> Table:
+    table = Table(title=title, title_justify="left", title_style="bold", box=None, pad_edge=False, padding=(0, 2, 0, 0))
+    for column in columns:
+        table.add_column(column, justify="right", no_wrap=True)
+    for row in rows:
+        table.add_row(*row)
+    return table
+
+
+def spread_tables(answer: Answer) -> list[Table]:
+    """Thresholds, then what makes the spread."""
+    question, rows = answer.question, answer.table.to_dict("records")
+    thresholds = [
+        [
+            f"{row['width_um']:g}",
+            _plus_minus(row, "vth_mean", "_v", 2, 1e3),
+            _bounds(row, "vth_sigma", "_mv", 2),
+            _plus_minus(row, "vth_skew", "", 2),
+            _plus_minus(row, "vth_p0_1", "_v", 1, 1e3),
+            _plus_minus(row, "vth_p99_9", "_v", 1, 1e3),
+        ]
+        for row in rows
+    ]
+    where = f"{one_line(answer.process)}, device {one_line(question['device'])}, L = {question['length_um']:g} um"
+    first = _table(
+        f"Threshold voltage in mV: {where}, {answer.samples} devices",
+        ["W um", "mean", "sigma [95 %]", "skew", "0.1 %", "99.9 %"],
+        thresholds,
+    )
+    shares = answer.tables["spread_shares"]
+    causes = shares[~shares.part.str.startswith("level_")]
+    largest = list(causes.groupby("part").share.max().sort_values(ascending=False).index[:LARGEST_CAUSES])
+    reasons = []
+    for row in rows:
+        mine = shares[shares.width_um == row["width_um"]].set_index("part")
+        local = [f"{row['vth_device_sigma_mv']:.2f}", f"{row['vth_device_sigma_area_law_mv']:.2f}"]
+        reasons.append(
+            [f"{row['width_um']:g}", *(local if "vth_device_sigma_mv" in row else ["-", "-"])]
+            + [f"{100 * mine.share[cause]:.1f} ±{_half_width(mine, cause):.1f}" for cause in largest]
+        )
+    second = _table(
+        "Neighbours' sigma in mV (±1 %) and shares of the whole variance in %",
+        ["W um", "sigma", "1/√WL", *[cause.replace("_", " ") for cause in largest]],
+        reasons,
+    )
+    return [first, second]
+
+
+def _half_width(shares, part: str) -> float:
+    return 100 * max(shares.share_high[part] - shares.share[part], shares.share[part] - shares.share_low[part])
+
+
+def timing_tables(answer: Answer) -> list[Table]:
+    """Yield, slowest path and the period that the target needs."""
+    question = answer.question
+    target = f"{100 * question['target_yield']:g} %"
+    rows = [
+        [
+            f"{row['width_um']:g}",
+            _bounds(row, "yield", "", 2, 100),
+            _plus_minus(row, "slowest_mean", "_ps", 1),
+            _plus_minus(row, "slowest_sigma", "_ps", 1),
+            _bounds(row, "period_at_target", "_ps", 0),
+        ]
+        for row in answer.table.to_dict("records")
+    ]
+    title = (
+        f"Timing: {one_line(answer.process)}, {question['paths']} paths of {question['stages']} stages at "
+        f"{question['supply_v']:g} V, {answer.samples} dies"
+    )
+    columns = ["W um", f"yield % at {question['period_ps']:g} ps", "slowest ps", "sigma ps", f"ps for {target}"]
+    return [_table(title, columns, rows)]
+
+
+TABLES = {"spread": spread_tables, "timing": timing_tables}
+
+
+def show(answers: list[Answer], out: Console) -> None:
+    """Print every answer: sentences, tables, notes; the caution at the end."""
+    for answer in answers:
+        for sentence in answer.sentences:
+            out.print(Text(sentence, style="bold"))
+        out.print()
+        for table in TABLES[answer.kind](answer):
+            out.print(table)
+            out.print()
+        for note in dict.fromkeys(answer.notes):
+            out.print(Text(f"* {note}"))
+        out.print()
+    out.print(Text(CAUTION, style="italic"))
+
+
+@contextmanager
+def progress_bar(questions: int):
+    """A function (number, name) -> progress callback; bars appear only on a terminal."""
+    if not sys.stderr.isatty():
+        yield lambda number, name: lambda done, total: None
+        return
+    bar = Progress(
+        TextColumn("{task.description}", markup=False),
+        BarColumn(),
+        TextColumn("{task.percentage:>3.0f} %"),
+        TimeRemainingColumn(),
+        console=console(sys.stderr),
+        transient=True,
+    )
+    with bar:
+
+        def start(number: int, name: str):
+            task = bar.add_task(f"{number} of {questions}: {one_line(name)}", total=None)
+            return lambda done, total: bar.update(task, completed=done, total=total)
+
+        yield start
