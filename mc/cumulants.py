@@ -1,6 +1,7 @@
 """Sums of independent parts by their cumulants: quadrature over single inputs, and the Cornish-Fisher normal score."""
 
 from collections.abc import Callable, Sequence
+from functools import cache
 
 import numpy as np
 from scipy.special import log_ndtr, ndtri_exp
@@ -10,6 +11,7 @@ NODES = 12  # exact for polynomials up to degree 23 in one input
 REACH = 8.0  # sigmas up to which the Cornish-Fisher expansion is used
 
 
+@cache
 def normal_nodes(count: int = NODES):
     """Nodes and weights for the mean of a function of one standard normal.
 
@@ -20,31 +22,64 @@ def normal_nodes(count: int = NODES):
     return nodes, weights / weights.sum()
 
 
-def additive_cumulants(model: Callable[[dict], np.ndarray], names: Sequence[str]):
-    """First four cumulants of a model of independent standard normals, from one input at a time.
+def product_cumulants(model: Callable[[dict], np.ndarray], names: Sequence[str]):
+    """First four cumulants of a positive model of independent standard normals, from one input at a time.
 
-    model : function of a dictionary of normals; inputs left out are 0; an input given as (NODES, 1) must broadcast
-        against whatever else the model holds, for instance (dies,)
+    model : positive function of a dictionary of normals; inputs left out are 0; an input given as (NODES, 1) must
+        broadcast against whatever else the model holds, for instance (dies,)
     names : the inputs
     Returns cumulants, shape (4, ...) with the model's own shape behind.
-    The model is replaced by the sum of its one-input functions, whose cumulants add: exact for additive models, an
-    approximation that leaves out interactions otherwise. A brute-force twin in the tests shows what is left out.
-    Source: S. Rahman and H. Xu, Probab. Eng. Mech. 19, 393 (2004) (memory): univariate dimension reduction.
+    The model is replaced by its value at 0 times one factor per input, whose raw moments multiply: exact when the
+    logarithm is additive, an approximation otherwise; `interaction_factors` says by how much it misses.
+    Source: X. Zhang and M. D. Pandey, Struct. Saf. 43, 28 (2013) (from memory): multiplicative dimension reduction.
     """
     nodes, weights = normal_nodes()
     base = np.asarray(model({}))
-    cumulants = np.zeros((4, *base.shape))
-    cumulants[0] = base
+    moments = np.ones((4, *base.shape))
     for name in names:
-        values = model({name: nodes[:, None]}) + np.zeros_like(base)
-        mean = weights @ values
-        centered = values - mean
-        second = weights @ centered**2
-        cumulants[0] += mean - base
-        cumulants[1] += second
-        cumulants[2] += weights @ centered**3
-        cumulants[3] += weights @ centered**4 - 3 * second**2
-    return cumulants
+        factor = np.broadcast_to(model({name: nodes[:, None]}), (nodes.size, *base.shape)) / base
+        power = factor
+        for moment in moments:
+            moment *= _weighted(weights, power)
+            power = power * factor
+    return _scaled(_cumulants_of_moments(moments), base)
+
+
+def interaction_factors(model: Callable[[dict], np.ndarray], draws):
+    """Cumulants of a model over those of its product form, both on the same draws.
+
+    model : as in `product_cumulants`, with the shape of the draws
+    draws : standard normals by input name, each (n,)
+    Returns factors on the four cumulants, shape (4,). The draws are shared, so their error is far below that of a
+    cumulant itself.
+    """
+    base = model({})
+    product = base * np.prod([model({name: normal}) / base for name, normal in draws.items()], axis=0)
+    return _sample_cumulants(model(draws) / base) / _sample_cumulants(product / base)
+
+
+def _sample_cumulants(values):
+    mean = values.mean()
+    centered = values - mean
+    second = (centered**2).mean()
+    return np.array([mean, second, (centered**3).mean(), (centered**4).mean() - 3 * second**2])
+
+
+def _cumulants_of_moments(moments):
+    """Cumulants from raw moments of a ratio near one, so that little cancels."""
+    mean, second, third, fourth = moments
+    variance = second - mean**2
+    fourth_central = fourth - 4 * third * mean + 6 * second * mean**2 - 3 * mean**4
+    return np.array([mean, variance, third - 3 * mean * second + 2 * mean**3, fourth_central - 3 * variance**2])
+
+
+def _scaled(cumulants, scale):
+    return np.array([cumulant * scale**order for order, cumulant in enumerate(cumulants, start=1)])
+
+
+def _weighted(weights, values):
+    """Weighted sum over the first axis, in a fixed order whatever linear-algebra library is there."""
+    return np.einsum("k,k...->...", weights, values)
 
 
 def standardise(cumulants):

@@ -5,20 +5,31 @@ by either edge, is pulled by n and p devices in turn: ceil(N/2) of one and floor
 different devices, so a chip has 2 P independent path delays and passes a period T with F_a(T)^P F_b(T)^P.
 
 Approximations: a stage's load is that of its die's mean devices (the scatter of single gates averages over the fan-out
-and both devices); the delay's dependence on single local causes is taken one at a time (`mc.cumulants`).
+and both devices). The local causes' effects on a delay multiply, corrected by factors measured on the nominal die.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.special import log_ndtr
 
-from mc.cumulants import NODES, additive_cumulants, score_from_value, score_of_largest, standardise, value_from_score
+from mc.cumulants import (
+    NODES,
+    interaction_factors,
+    product_cumulants,
+    score_from_value,
+    score_of_largest,
+    standardise,
+    value_from_score,
+)
+from mc.streams import Streams
 from physics.gate_delay import effective_drive_current, gate_capacitance, stage_delay
 from physics.threshold import oxide_capacitance
 from studies.geometry import Geometry
 from studies.population import Population, Silicon
 from studies.units import si
+
+INTERACTION_SAMPLES = 32768
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -36,6 +47,7 @@ class Stage:
     pull_down, pull_up : the n and the p device
     stages : per path [1]; fan_out : gates driven by each stage [1]
     wire_capacitance : per stage [F]; supply : [V]
+    interactions : factors on the cumulants of either side's delay, see `with_interactions`
     """
 
     pull_down: Side
@@ -44,6 +56,7 @@ class Stage:
     fan_out: float
     wire_capacitance: float
     supply: float
+    interactions: tuple[np.ndarray, np.ndarray] = (np.ones(4), np.ones(4))
 
     @property
     def sides(self) -> tuple[Side, Side]:
@@ -76,8 +89,8 @@ class Stage:
         half, full = side.population.channels(draws, side.geometry, silicon, (self.supply / 2, self.supply))
         return stage_delay(load, self.supply, effective_drive_current(half, full, self.supply))
 
-    def stage_cumulants(self, side: Side, die, load) -> np.ndarray:
-        """First four cumulants of a stage's delay on every die, shape (4, dies) [s, s^2, s^3, s^4]."""
+    def _local_model(self, side: Side, die, load):
+        """Delay of a stage as a function of the device-level draws alone."""
         population = side.population
         die_silicon = population.silicon(die)
 
@@ -86,12 +99,29 @@ class Stage:
             silicon = population.silicon(draws) if population.silicon_inputs & set(local) else die_silicon
             return self.delay(side, draws, silicon, load)
 
-        return additive_cumulants(model, population.names(level="device"))
+        return model
+
+    def with_interactions(self, seed: int) -> "Stage":
+        """The stage with the interactions of its local causes measured on the nominal die, for use on every die."""
+        load = self.load({})
+        factors = []
+        for side in self.sides:
+            streams = Streams(seed, 0, side.population.names(level="device"))
+            factors.append(interaction_factors(self._local_model(side, {}, load), streams.take(INTERACTION_SAMPLES)))
+        return replace(self, interactions=tuple(factors))
+
+    def stage_cumulants(self, die) -> list[np.ndarray]:
+        """First four cumulants of a stage's delay on every die, shape (4, dies) [s, s^2, s^3, s^4], for either side."""
+        load = self.load(die)
+        return [
+            product_cumulants(self._local_model(side, die, load), side.population.names(level="device"))
+            * factors[:, None]
+            for side, factors in zip(self.sides, self.interactions)
+        ]
 
     def path_cumulants(self, die) -> list[np.ndarray]:
         """Cumulants of a path's delay on every die, shape (4, dies), for each of the two launching edges."""
-        load = self.load(die)
-        down, up = (self.stage_cumulants(side, die, load) for side in self.sides)
+        down, up = self.stage_cumulants(die)
         many, few = (self.stages + 1) // 2, self.stages // 2
         return [many * down + few * up, few * down + many * up]
 

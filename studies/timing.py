@@ -149,7 +149,7 @@ def answer(
 
 def prepare(question: Question, file: ProcessFile, settings: Settings) -> Chips:
     """The task of a question: populations, geometries, and the period grid from a pilot of dies."""
-    stages = _stages(question, file)
+    stages = tuple(stage.with_interactions(settings.seed) for stage in _stages(question, file))
     populations = [side.population for side in stages[0].sides]
     names = tuple(name for each in populations for level in LEVELS[:-1] for name in each.names(level=level))
     inputs = Inputs(seed=settings.seed, names=(*names, *SLOWEST), copula=populations[0].copula, slice_size=SLICE)
