@@ -104,9 +104,9 @@ def compound_poisson_quantiles(normal, mean_count, density):
 class CountedLaw:
     """Standardised scatter of counted dopants around one nominal device, tabulated.
 
-    normal_start, normal_per_step : the grid of standard normals [1]
+    normal_start, steps_per_normal : the grid of standard normals [1]
     center : table at the middle of the two node counts [1]
-    slope : its derivative with the inverse root of the mean count [1]
+    slope_fewer, slope_more : its derivative with the inverse root of the mean count [1]
     inverse_root : the middle of the inverse roots [1]
     The table is linear in 1/sqrt(mean count) between nodes 20 % below and 25 % above the nominal count; at 25 dopants
     and three sigmas this errs by about 1e-3 sigma, at 5 dopants by 3e-2 where the device may hold none.
@@ -115,7 +115,8 @@ class CountedLaw:
     normal_start: float
     steps_per_normal: float
     center: np.ndarray
-    slope: np.ndarray
+    slope_fewer: np.ndarray
+    slope_more: np.ndarray
     inverse_root: float
 
     @classmethod
@@ -127,15 +128,17 @@ class CountedLaw:
         Returns a CountedLaw.
         """
         fewer, more = 0.8 * mean_count, 1.25 * mean_count
+        at_nominal = compound_poisson_quantiles(_NORMALS, mean_count, density)
         at_fewer = compound_poisson_quantiles(_NORMALS, fewer, density)
         at_more = compound_poisson_quantiles(_NORMALS, more, density)
         low, high = more**-0.5, fewer**-0.5
         return cls(
             normal_start=float(_NORMALS[0]),
             steps_per_normal=64.0,
-            center=(at_fewer + at_more) / 2,
-            slope=(at_fewer - at_more) / (high - low),
-            inverse_root=(low + high) / 2,
+            center=at_nominal,
+            slope_fewer=(at_fewer - at_nominal) / (high - mean_count**-0.5),
+            slope_more=(at_nominal - at_more) / (mean_count**-0.5 - low),
+            inverse_root=mean_count**-0.5,
         )
 
     def standardised(self, normal, mean_count):
@@ -149,7 +152,8 @@ class CountedLaw:
         left = np.clip(place, 0, self.center.size - 2).astype(np.int32)
         share = place - left
         distance = 1 / np.sqrt(mean_count) - self.inverse_root
-        lower = self.center.take(left) + distance * self.slope.take(left)
+        fewer, more = np.maximum(distance, 0), np.minimum(distance, 0)
+        lower = self.center.take(left) + fewer * self.slope_fewer.take(left) + more * self.slope_more.take(left)
         right = left + np.int32(1)
-        upper = self.center.take(right) + distance * self.slope.take(right)
+        upper = self.center.take(right) + fewer * self.slope_fewer.take(right) + more * self.slope_more.take(right)
         return lower + share * (upper - lower)

@@ -79,10 +79,17 @@ def critical_drop(mobility, length, saturation_velocity):
 
 
 def _terminal_charges(channel, gate_voltage, drain_voltage):
-    """ln(1 + exp(v/2)) at source and drain [1]: square roots of the forward and the reverse normalised current."""
+    """ln(1 + exp(v/2)) at source and drain [1]: square roots of the forward and the reverse normalised current.
+
+    Once carriers move at their saturation velocity the drain end keeps the charge that carries the saturated current, so
+    that the current never falls as the drain voltage rises (Sodini's saturation drop, see `critical_drop`).
+    """
     forward = (gate_voltage - channel.threshold) / (channel.slope_factor * channel.thermal_voltage)
     reverse = forward - drain_voltage / channel.thermal_voltage
-    return forward, reverse, np.logaddexp(0, forward / 2), np.logaddexp(0, reverse / 2)
+    at_source, at_drain = np.logaddexp(0, forward / 2), np.logaddexp(0, reverse / 2)
+    drop_scale = 2 * channel.thermal_voltage / channel.critical_drop
+    saturated = drop_scale * at_source**2 / (1 + drop_scale * at_source)
+    return forward, reverse, at_source, np.maximum(at_drain, saturated)
 
 
 def drain_current(channel: Channel, gate_voltage, drain_voltage):
@@ -92,8 +99,8 @@ def drain_current(channel: Channel, gate_voltage, drain_voltage):
     gate_voltage, drain_voltage : against the source, magnitudes [V], drain_voltage >= 0
     Returns current [A], >= 0.
     Forward less reverse interpolation, divided by 1 + theta V_ov and by 1 + drop/(E_c L), with the smooth overdrive
-    V_ov = 2 n kT/q ln(1 + exp(v/2)) and the smooth drop 2 kT/q times the difference of the logarithms. For a mobility
-    without bound the saturated current tends to W C_ox v_sat V_ov, as it should.
+    V_ov = 2 n kT/q ln(1 + exp(v/2)) and the smooth drop 2 kT/q times the difference of the logarithms, at most
+    the saturation drop. For a mobility without bound the saturated current tends to W C_ox v_sat V_ov, as it should.
     Source: Enz 1995 with the two usual corrections (common practice).
     """
     _, _, at_source, at_drain = _terminal_charges(channel, gate_voltage, drain_voltage)
@@ -113,9 +120,14 @@ def transconductance_efficiency(channel: Channel, gate_voltage, drain_voltage):
     Source: derivative of the logarithm of `drain_current`.
     """
     forward, reverse, at_source, at_drain = _terminal_charges(channel, gate_voltage, drain_voltage)
-    source_slope = 0.5 / (1 + np.exp(-forward / 2))
-    drain_slope = 0.5 / (1 + np.exp(-reverse / 2))
     twice_kt = 2 * channel.thermal_voltage
+    ratio = twice_kt / channel.critical_drop * at_source
+    source_slope = 0.5 / (1 + np.exp(-forward / 2))
+    drain_slope = np.where(
+        at_drain > np.logaddexp(0, reverse / 2),
+        source_slope * ratio * (2 + ratio) / (1 + ratio) ** 2,
+        0.5 / (1 + np.exp(-reverse / 2)),
+    )
     overdrive_scale = twice_kt * channel.slope_factor * channel.mobility_degradation
     drop_scale = twice_kt / channel.critical_drop
     current_part = 2 * (at_source * source_slope - at_drain * drain_slope) / (at_source**2 - at_drain**2)

@@ -100,7 +100,7 @@ class TabulatedEdge:
     factor : factors on the bulk depletion charge [1], > 0
     The table is interpolated in 1/width with the wide limit (0, 1) added, so it is exact for a 1/W law. Below the first
     width it keeps the last slope: a study refuses nominal widths there, random samples may stray a little.
-    Raises ValueError for widths that do not increase.
+    Raises ValueError for widths that do not increase, and for widths or factors that are not positive numbers.
     """
 
     def __init__(self, *, width, factor):
@@ -108,8 +108,11 @@ class TabulatedEdge:
         if width.size < 2 or np.any(np.diff(width) <= 0):
             raise ValueError("the widths of an edge table must increase, and be two or more")
         self.smallest_width = float(width[0])
+        factor = np.asarray(factor, float)
+        if not (np.all(width > 0) and np.all(factor > 0) and np.all(np.isfinite(factor))):
+            raise ValueError("the widths and factors of an edge table must be positive numbers")
         inverse = np.concatenate([[0.0], 1 / width[::-1]])
-        values = np.concatenate([[1.0], np.asarray(factor, float)[::-1]])
+        values = np.concatenate([[1.0], factor[::-1]])
         self._factor = PchipInterpolator(inverse, values, extrapolate=False)
         self._last = (inverse[-1], values[-1], float(self._factor.derivative()(inverse[-1])))
 

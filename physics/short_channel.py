@@ -37,8 +37,10 @@ def charge_sharing_factor(depletion_width, length, junction_depth):
     """
     reach = charge_sharing_reach(depletion_width, junction_depth)
     if np.any(length < 2 * reach):
+        shortest = 2e9 * np.max(reach)
         raise ChannelTooShort(
-            "the charge-sharing trapezoid has closed: the channel is shorter than twice the reach of a junction"
+            f"the charge-sharing trapezoid has closed: {shortest:.0f} nm, twice the reach of a junction, is the shortest "
+            f"channel it holds for; {1e9 * np.min(length):.0f} nm is asked for"
         )
     return 1 - reach / length
 
@@ -67,9 +69,9 @@ def quasi_two_dimensional_shift(length_ratio, barrier, drain_voltage):
     quadratic; with half-angle identities its root is (2a + V + 2 cosh(h) sqrt(a(a + V)))/(2 sinh^2 h), h = L/2l
     (own derivation).
     """
-    half = length_ratio / 2
+    decay = np.exp(-length_ratio / 2)
     root = np.sqrt(barrier * (barrier + drain_voltage))
-    return (2 * barrier + drain_voltage + 2 * np.cosh(half) * root) / (2 * np.sinh(half) ** 2)
+    return 2 * decay * ((2 * barrier + drain_voltage) * decay + (1 + decay**2) * root) / np.expm1(-length_ratio) ** 2
 
 
 @dataclass(frozen=True, kw_only=True)

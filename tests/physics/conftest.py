@@ -1,4 +1,8 @@
-"""What the physics tests share: a device to vary, a channel to vary."""
+"""What the physics tests share: a device to vary, a channel to vary.
+
+Comparisons say abs=0 wherever they say rel: pytest.approx else allows 1e-12 besides, more than a gate's capacitance in
+farads, and a ten-thousandth of a depletion width in metres.
+"""
 
 import dataclasses
 

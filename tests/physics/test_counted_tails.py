@@ -1,7 +1,7 @@
 """Tails of the counted law against a convolution done another way, in exact fractions.
 
-With uniform depths the sum of k weights has the Irwin-Hall distribution, and the device's law is its mixture over a Poisson
-k. The alternating sum of that distribution loses every digit in floating point at k = 20; in fractions it loses none.
+With uniform depths the sum of k weights has the Irwin-Hall distribution, and the device's law is its mixture over a
+Poisson k. The alternating sum of that distribution loses every digit in floating point at k = 20; in fractions none.
 """
 
 from fractions import Fraction
@@ -66,10 +66,10 @@ def test_law_between_its_nodes_keeps_its_promise():
         assert np.abs(law.standardised(normals, mean_count) - exact).max() < 1e-3
 
 
-@pytest.mark.xfail(strict=True, reason="linear between two counts: 5e-3 sigma at -5, 4e-2 at -6.4 for 25 dopants")
 @pytest.mark.parametrize("normal", [-6.0, -5.0])
 def test_law_at_its_nominal_count_is_exact_in_the_lower_tail(normal):
-    # The tail estimator drives the law at the nominal count; an error of 0.1 sigma at -6 is a factor of 2 in probability.
+    # The tail estimator drives the law at the nominal count; an error of 0.1 sigma at -6 is a factor of 2 in
+    # probability.
     law = CountedLaw.build(FEW, uniform_density)
     assert normal_at(law.standardised(normal, FEW), FEW) == pytest.approx(normal, abs=LATTICE_STEP)
 
@@ -77,9 +77,9 @@ def test_law_at_its_nominal_count_is_exact_in_the_lower_tail(normal):
 def test_interpolation_in_the_count_gets_better_with_the_count():
     # The law's curvature in 1/sqrt(m) times the squared distance of the nodes, which is proportional to 1/m.
     errors = []
-    for mean_count in (50.0, 200.0):
+    for nominal in (50.0, 200.0):
+        law, mean_count = CountedLaw.build(nominal, uniform_density), 0.9 * nominal
         exact = compound_poisson_quantiles(np.array([-4.0, 4.0]), mean_count, uniform_density)
-        law = CountedLaw.build(mean_count, uniform_density)
         errors.append(np.abs(law.standardised(np.array([-4.0, 4.0]), mean_count) - exact))
     assert np.all(errors[1] < errors[0] / 3)
 
@@ -88,16 +88,16 @@ def test_law_tends_to_the_normal_law_at_the_rate_of_its_skew():
     # Cornish-Fisher: z + skew (z^2 - 1)/6, with a remainder of order 1/m: ten times smaller at ten times the count.
     normals = np.linspace(-3, 3, 13)
     remainder = []
-    for mean_count in (1e3, 1e4):
+    for mean_count in (1e2, 1e3):
         skew = mean_count / 4 / (mean_count / 3) ** 1.5
         found = compound_poisson_quantiles(normals, mean_count, uniform_density)
         remainder.append(np.abs(found - normals - skew * (normals**2 - 1) / 6).max())
-    assert remainder[0] < 3e-3
-    assert remainder[1] < remainder[0] / 8
+    assert remainder[0] / remainder[1] == pytest.approx(10, rel=0.1, abs=0)
 
 
 def test_device_that_may_hold_no_dopant_has_an_atom():
-    # Mean 3: with probability e^-3 there is none, so every normal below -1.65 gives exactly zero, minus the mean over sigma.
+    # Mean 3: with probability e^-3 there is none, so every normal below -1.65 gives exactly zero, minus the mean over
+    # sigma.
     quantiles = compound_poisson_quantiles(np.linspace(-8, 8, 321), 3.0, uniform_density)
     none = np.linspace(-8, 8, 321) < ndtri(exp(-3.0)) - 0.01
     assert quantiles[none] == pytest.approx(-1.5, abs=1e-3)

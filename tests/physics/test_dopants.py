@@ -72,45 +72,49 @@ def test_closed_forms_with_the_fringe_against_dopants_drawn_one_by_one():
 def test_fringe_against_a_numeric_integral(power):
     # Half a circle's circumference in all at radius rho: shape pi/2 is two quarter circles, of pi rho/2 each.
     expected = quad(lambda rho: np.pi * rho * 1e24 * (1 - rho / DEPTH) ** power, 0, DEPTH)[0]
-    assert fringe_weighted_dopants(1e24, DEPTH, np.pi / 2, power) == pytest.approx(expected, rel=1e-10)
+    assert fringe_weighted_dopants(1e24, DEPTH, np.pi / 2, power) == pytest.approx(expected, rel=1e-10, abs=0)
 
 
 @pytest.mark.parametrize("width", [20e-9, 50e-9, 1e-6])
 def test_fringe_multiplies_the_variance(width):
     plain = dopant_sigma(UNIFORM, DEPTH, width, 50e-9, CAPACITANCE)
     fringed = dopant_sigma(UNIFORM, DEPTH, width, 50e-9, CAPACITANCE, np.pi / 2)
-    assert (fringed / plain) ** 2 == pytest.approx(1 + np.pi / 4 * DEPTH / width, rel=1e-12)
+    assert (fringed / plain) ** 2 == pytest.approx(1 + np.pi / 4 * DEPTH / width, rel=1e-12, abs=0)
 
 
 def test_number_of_dopants_is_that_of_the_volume():
-    assert weighted_count(UNIFORM, DEPTH, 50e-9, 80e-9, 0) == pytest.approx(1e24 * DEPTH * 50e-9 * 80e-9, rel=1e-12)
+    assert weighted_count(UNIFORM, DEPTH, 50e-9, 80e-9, 0) == pytest.approx(
+        1e24 * DEPTH * 50e-9 * 80e-9, rel=1e-12, abs=0
+    )
     inside = 3e23 * 12e-9 + 1.2e24 * (DEPTH - 12e-9)
-    assert weighted_count(STEP, DEPTH, 50e-9, 80e-9, 0) == pytest.approx(inside * 50e-9 * 80e-9, rel=1e-12)
+    assert weighted_count(STEP, DEPTH, 50e-9, 80e-9, 0) == pytest.approx(inside * 50e-9 * 80e-9, rel=1e-12, abs=0)
 
 
 def test_sigma_follows_the_area_and_skew_the_number():
     # sigma sqrt(W L) is constant; the skew falls as one over the root of the number.
     small, large = (dopant_sigma(UNIFORM, DEPTH, side, side, CAPACITANCE) for side in (50e-9, 200e-9))
-    assert small / large == pytest.approx(4, rel=1e-12)
+    assert small / large == pytest.approx(4, rel=1e-12, abs=0)
     skew = [
         weighted_count(UNIFORM, DEPTH, side, side, 3) / weighted_count(UNIFORM, DEPTH, side, side, 2) ** 1.5
         for side in (50e-9, 200e-9)
     ]
-    assert skew[0] / skew[1] == pytest.approx(4, rel=1e-12)
+    assert skew[0] / skew[1] == pytest.approx(4, rel=1e-12, abs=0)
 
 
 def test_one_dopant_moves_the_threshold_by_its_share_of_the_charge():
-    # A sheet of as many charges as there are unit areas in the channel moves it by q dose/C_ox: W L dose dopants in all.
+    # A sheet of as many charges as there are unit areas in the channel moves it by q dose/C_ox: W L dose dopants in
+    # all.
     dose, width, length = 1e15, 50e-9, 80e-9
     number = dose * width * length
     expected = 1.602176634e-19 * dose / CAPACITANCE
-    assert number * single_dopant_shift(CAPACITANCE, width, length) == pytest.approx(expected, rel=1e-12)
+    assert number * single_dopant_shift(CAPACITANCE, width, length) == pytest.approx(expected, rel=1e-12, abs=0)
 
 
 @pytest.mark.parametrize("fringe_shape", [0.0, np.pi / 2])
 @pytest.mark.parametrize("profile", [UNIFORM, STEP], ids=["uniform", "step"])
 def test_density_of_the_weight_has_the_moments_of_the_counts(profile, fringe_shape):
-    # Two ways to the same law: integrals over places (weighted_count) and over weights (the density the table is made of).
+    # Two ways to the same law: integrals over places (weighted_count) and over weights (the density the table is made
+    # of).
     width, length = 50e-9, 60e-9
     surface_depth = profile.surface_depth if profile is STEP else 0.0
     ratios = {
@@ -126,4 +130,4 @@ def test_density_of_the_weight_has_the_moments_of_the_counts(profile, fringe_sha
 
     for power in (1, 2, 3):
         counts = [weighted_count(profile, DEPTH, width, length, j, fringe_shape) for j in (power, 0)]
-        assert moment(power) / moment(0) == pytest.approx(counts[0] / counts[1], rel=1e-8)
+        assert moment(power) / moment(0) == pytest.approx(counts[0] / counts[1], rel=1e-8, abs=0)

@@ -39,12 +39,12 @@ def test_width_charge_and_weights_against_numeric_integrals(profile, potential):
     width = profile.depletion_width(potential)
     # Poisson's equation integrated twice: the band bending is q/eps_s times the first moment of the doping.
     bending = ELEMENTARY_CHARGE / SILICON_PERMITTIVITY * integral(profile, width, lambda depth: depth)
-    assert bending == pytest.approx(potential, rel=1e-9)
+    assert bending == pytest.approx(potential, rel=1e-9, abs=0)
     charge = ELEMENTARY_CHARGE * integral(profile, width, lambda depth: 1.0)
-    assert profile.depletion_charge(width) == pytest.approx(charge, rel=1e-9)
+    assert profile.depletion_charge(width) == pytest.approx(charge, rel=1e-9, abs=0)
     for power in range(4):
         weighted = integral(profile, width, lambda depth, power=power: (1 - depth / width) ** power)
-        assert profile.weighted_dopants(width, power) == pytest.approx(weighted, rel=1e-9)
+        assert profile.weighted_dopants(width, power) == pytest.approx(weighted, rel=1e-9, abs=0)
 
 
 @given(log_doping=log_doping, depth_nm=depth_nm, potential=volts)
@@ -54,11 +54,11 @@ def test_step_of_equal_dopings_is_uniform(log_doping, depth_nm, potential):
     uniform = UniformProfile(doping=doping)
     step = StepProfile(surface_doping=doping, surface_depth=depth_nm * 1e-9, doping=doping)
     width = uniform.depletion_width(potential)
-    assert step.depletion_width(potential) == pytest.approx(width, rel=1e-12)
-    assert step.depletion_charge(width) == pytest.approx(uniform.depletion_charge(width), rel=1e-12)
+    assert step.depletion_width(potential) == pytest.approx(width, rel=1e-12, abs=0)
+    assert step.depletion_charge(width) == pytest.approx(uniform.depletion_charge(width), rel=1e-12, abs=0)
     for power in range(4):
         expected = uniform.weighted_dopants(width, power)
-        assert step.weighted_dopants(width, power) == pytest.approx(expected, rel=1e-12)
+        assert step.weighted_dopants(width, power) == pytest.approx(expected, rel=1e-12, abs=0)
 
 
 @given(surface=log_doping, substrate=log_doping, depth_nm=depth_nm)
@@ -70,7 +70,7 @@ def test_width_is_continuous_where_it_crosses_the_step(surface, substrate, depth
     around = profile.depletion_width(crossing * np.array([1 - 1e-9, 1 + 1e-9]))
     # The width's own slope there: d ln(x_d)/d ln(potential) is 1/2 above the step, (N_surface/N_substrate)/2 below it.
     allowed = 1e-9 * (1 + max(1, 10 ** (surface - substrate)))
-    assert around == pytest.approx(depth, rel=allowed)
+    assert around == pytest.approx(depth, rel=allowed, abs=0)
 
 
 @given(surface=log_doping, substrate=log_doping, depth_nm=depth_nm)
@@ -84,9 +84,9 @@ def test_step_below_the_depletion_region_does_not_count():
     shallow = UniformProfile(doping=8e23)
     step = StepProfile(surface_doping=8e23, surface_depth=1e-6, doping=1e22)
     width = shallow.depletion_width(0.9)
-    assert step.depletion_width(0.9) == pytest.approx(width, rel=1e-14)
-    assert step.depletion_charge(width) == pytest.approx(shallow.depletion_charge(width), rel=1e-14)
-    assert step.weighted_dopants(width, 2) == pytest.approx(shallow.weighted_dopants(width, 2), rel=1e-14)
+    assert step.depletion_width(0.9) == pytest.approx(width, rel=1e-14, abs=0)
+    assert step.depletion_charge(width) == pytest.approx(shallow.depletion_charge(width), rel=1e-14, abs=0)
+    assert step.weighted_dopants(width, 2) == pytest.approx(shallow.weighted_dopants(width, 2), rel=1e-14, abs=0)
 
 
 def test_thin_layer_tends_to_a_sheet_of_dopants():
@@ -101,7 +101,7 @@ def test_thin_layer_tends_to_a_sheet_of_dopants():
         return shift - implant_shift(dose, capacitance)
 
     assert abs(error(0.01e-9)) < 1e-3 * implant_shift(dose, capacitance)
-    assert error(0.02e-9) / error(0.01e-9) == pytest.approx(2, rel=1e-3)
+    assert error(0.02e-9) / error(0.01e-9) == pytest.approx(2, rel=1e-3, abs=0)
 
 
 @pytest.mark.parametrize("profile", PROFILES, ids=["retrograde", "implanted", "uniform"])
@@ -109,8 +109,8 @@ def test_scaled_profile(profile):
     # Four times every density at four times the bending leaves the width where it is and takes four times the charge.
     scaled = profile.scaled(4.0)
     width = profile.depletion_width(POTENTIALS)
-    assert scaled.depletion_width(4 * POTENTIALS) == pytest.approx(width, rel=1e-12)
-    assert scaled.depletion_charge(width) == pytest.approx(4 * profile.depletion_charge(width), rel=1e-12)
+    assert scaled.depletion_width(4 * POTENTIALS) == pytest.approx(width, rel=1e-12, abs=0)
+    assert scaled.depletion_charge(width) == pytest.approx(4 * profile.depletion_charge(width), rel=1e-12, abs=0)
 
 
 def test_arrays_of_profiles_broadcast():

@@ -27,7 +27,8 @@ def test_ideal_swing():
 
 
 def test_swing_of_the_drain_current_tends_to_the_ideal():
-    # The same figure from the current itself, slope factor 1, 1.2 V below threshold: there the current is exp(v) to 1e-10.
+    # The same figure from the current itself, slope factor 1, 1.2 V below threshold: there the current is exp(v) to
+    # 1e-10.
     channel = Channel(
         threshold=1.2,
         slope_factor=1.0,

@@ -12,7 +12,8 @@ from physics.roughness import (
 )
 
 
-# Correlation length 20 nm; averaging length; root of the variance factor for exp(-|x|/Lambda) and for exp(-x^2/Lambda^2).
+# Correlation length 20 nm; averaging length; root of the variance factor for exp(-|x|/Lambda) and for
+# exp(-x^2/Lambda^2).
 @pytest.mark.parametrize(
     "averaging_nm, exponential, gaussian",
     [

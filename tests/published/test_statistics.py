@@ -33,8 +33,8 @@ def test_wilson_lower_limit():
     assert f"{fraction_wilson(26, 200, level=0.90).low:.5f}" == "0.09577"
 
 
-# Ceramic and wafer data of the NIST/SEMATECH e-Handbook, second hand: s = 13.97 of n = 10, 95 %: 9.60906 to 25.50377. The
-# data's s is not exactly 13.97, so the printed limits are held relative to it: 13.97 is known to 0.005/13.97 = 4e-4.
+# Ceramic and wafer data of the NIST/SEMATECH e-Handbook, second hand: s = 13.97 of n = 10, 95 %: 9.60906 to 25.50377.
+# The data's own s was rounded to 13.97, so the printed limits are known relative to it: 0.005/13.97 = 4e-4.
 def test_sigma_interval():
     interval = sigma_chi_square(13.97**2, 10)
     assert interval.low == pytest.approx(9.60906, rel=4e-4)

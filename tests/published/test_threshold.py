@@ -1,7 +1,8 @@
 """Threshold voltage against worked examples: N4 is Neamen, Semiconductor Physics and Devices, 4th ed. (print).
 
-Each of his examples is replayed twice: with his constants (kT/q = 0.0259 V, n_i = 1.5e10 cm^-3, q and permittivities from
-the fixture) it must round to what he prints; with CODATA and kT/q at 300 K, n_i still his, to the list's second figure.
+Each of his examples is replayed twice: with his constants (kT/q = 0.0259 V, n_i = 1.5e10 cm^-3, q and permittivities
+from the fixture) it must round to what he prints; with CODATA and kT/q at 300 K, n_i still his, to the list's second
+figure.
 """
 
 import numpy as np
@@ -66,7 +67,8 @@ def test_examples_10_4_and_10_5_with_our_constants(inputs, derived):
 
 
 def test_example_10_9_body_effect_as_printed(neamen):
-    # The book divides by its rounded C_ox = 1.726e-7 F/cm^2; the exact 1.72575e-7 would give 0.5777 instead of its 0.5776.
+    # The book divides by its rounded C_ox = 1.726e-7 F/cm^2; the exact 1.72575e-7 would give 0.5777 instead of its
+    # 0.5776.
     coefficient = body_coefficient(3e22, 1.726e-3)
     potential, _, _ = depletion(3e16, BOOK_KT)
     assert f"{coefficient:.4f}" == "0.5776"
@@ -135,10 +137,8 @@ def test_body_effect_of_rabaey():
 
 
 def test_body_effect_of_singh(use_constants):
-    # J. Singh, Semiconductor Devices, example 9.10, second hand: N = 2e16, 50 nm, V_SB = 1, n_i = 1.5e10, kT/q = 0.026 and
-    # a permittivity of 11.9. With our 11.7 it is 0.543: gamma goes as the root of the silicon's permittivity.
-    use_constants(
-        ELEMENTARY_CHARGE=1.6e-19, SILICON_PERMITTIVITY=11.9 * 8.85e-12, OXIDE_PERMITTIVITY=3.9 * 8.85e-12
-    )
+    # J. Singh, Semiconductor Devices, example 9.10, second hand: N = 2e16, 50 nm, V_SB = 1, n_i = 1.5e10, kT/q = 0.026
+    # and a permittivity of 11.9. With our 11.7 it is 0.543: gamma goes as the root of the silicon's permittivity.
+    use_constants(ELEMENTARY_CHARGE=1.6e-19, SILICON_PERMITTIVITY=11.9 * 8.85e-12, OXIDE_PERMITTIVITY=3.9 * 8.85e-12)
     potential, _, _ = depletion(2e16, 0.026)
     assert f"{body_effect(body_coefficient(2e22, oxide_capacitance(50e-9)), potential, 1.0):.3f}" == "0.547"
