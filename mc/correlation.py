@@ -27,7 +27,7 @@ def semidefinite_root(matrix):
     return root
 
 
-@dataclass(frozen=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Copula:
     """Correlated inputs.
 
@@ -46,7 +46,10 @@ class Copula:
         """
         names = tuple(dict.fromkeys(name for first, second, _ in pairs for name in (first, second)))
         matrix = np.eye(len(names))
+        given = [frozenset(pair[:2]) for pair in pairs]
         for first, second, value in pairs:
+            if given.count(frozenset((first, second))) > 1:
+                raise ValueError(f"correlation between {first} and {second} is given more than once: keep one of them")
             if first == second or not -1 <= value <= 1:
                 raise ValueError(f"correlation {value} between {first} and {second}: two names and -1 to 1 are needed")
             row, column = names.index(first), names.index(second)

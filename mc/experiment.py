@@ -33,6 +33,10 @@ class Inputs:
     copula: Copula = field(default_factory=Copula)
     slice_size: int = SLICE
 
+    def __post_init__(self):
+        if not isinstance(self.seed, int) or self.seed < 0:
+            raise ValueError(f"seed {self.seed!r}: a whole number, 0 or more, is needed")
+
     def slices(self, block: Block):
         """The block's draws, a dictionary of (up to slice_size,) arrays at a time."""
         streams = Streams(self.seed, block.number, self.copula.needed(self.names))
@@ -55,6 +59,16 @@ class LawModel:
         return self.model({name: law.from_normal(draws[name]) for name, law in self.laws.items()})
 
 
+def _outputs(model, draws):
+    """A model's outputs, shape (outputs, n); raises ValueError when n is not that of the draws."""
+    outputs, count = np.atleast_2d(model(draws)), len(next(iter(draws.values())))
+    if outputs.ndim != 2 or outputs.shape[1] != count:
+        raise ValueError(
+            f"a model of {count} draws returned outputs of shape {outputs.shape}: (outputs, {count}) is needed"
+        )
+    return outputs
+
+
 @dataclass(frozen=True, kw_only=True)
 class Experiment:
     """A task for the runner: tally a model's outputs over a block.
@@ -74,8 +88,8 @@ class Experiment:
     def prepare(cls, model: Model, inputs: Inputs, tally: type[Moments] = Tally) -> "Experiment":
         """An experiment whose grid comes from a pilot, the first slice of block 0, which the run will see again."""
         draws = next(inputs.slices(Block(0, PILOT)))
-        return cls(model=model, inputs=inputs, grid=Grid.from_pilot(np.atleast_2d(model(draws))), tally=tally)
+        return cls(model=model, inputs=inputs, grid=Grid.from_pilot(_outputs(model, draws)), tally=tally)
 
     def __call__(self, block: Block) -> Moments:
         """Tally of one block. Raises FloatingPointError when an output is not finite."""
-        return self.tally.of(self.grid, (np.atleast_2d(self.model(draws)) for draws in self.inputs.slices(block)))
+        return self.tally.of(self.grid, (_outputs(self.model, draws) for draws in self.inputs.slices(block)))

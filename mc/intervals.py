@@ -1,14 +1,14 @@
 """A number and how well it is known. Spread of the devices never enters here but as an estimate with its own interval."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy import stats
 
 from mc.tally import Moments
 
-MOST_EFFECTIVE = 1e12
 LEAST_EVENTS = 1e-6
+MOST_EFFECTIVE = 1e18  # up to here beta quantiles are right to 1e-9
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -28,16 +28,13 @@ class Estimate:
     n: int
     method: str
 
+    def complement(self) -> "Estimate":
+        """One less the estimate: a yield from a loss."""
+        return replace(self, value=1 - self.value, low=1 - self.high, high=1 - self.low)
+
     def scaled(self, factor: float) -> "Estimate":
         """The same estimate in another unit; factor > 0."""
-        return Estimate(
-            value=self.value * factor,
-            low=self.low * factor,
-            high=self.high * factor,
-            level=self.level,
-            n=self.n,
-            method=self.method,
-        )
+        return replace(self, value=self.value * factor, low=self.low * factor, high=self.high * factor)
 
 
 def fraction_exact(successes: float, n: float, level=0.95) -> Estimate:
@@ -46,6 +43,8 @@ def fraction_exact(successes: float, n: float, level=0.95) -> Estimate:
     successes, n : counts, 0 <= successes <= n; an effective number need not be whole
     Source: C. J. Clopper and E. S. Pearson, Biometrika 26, 404 (1934), by beta quantiles.
     """
+    if successes > n - successes:  # the smaller count keeps the digits
+        return fraction_exact(n - successes, n, level).complement()
     tail = (1 - level) / 2
     low = stats.beta.ppf(tail, successes, n - successes + 1) if successes > 0 else 0.0
     high = stats.beta.ppf(1 - tail, successes + 1, n - successes) if successes < n else 1.0
@@ -64,22 +63,28 @@ def fraction_wilson(successes: float, n: float, level=0.95) -> Estimate:
     middle = (share + score**2 / (2 * n)) / (1 + score**2 / n)
     half = score / (1 + score**2 / n) * np.sqrt(share * (1 - share) / n + score**2 / (4 * n**2))
     return Estimate(
-        value=share, low=float(middle - half), high=float(middle + half), level=level, n=int(n), method="Wilson score"
+        value=share,
+        low=float(middle - half) if successes > 0 else 0.0,
+        high=float(middle + half) if successes < n else 1.0,
+        level=level,
+        n=int(n),
+        method="Wilson score",
     )
 
 
 def bounded_mean(total: float, total_of_squares: float, n: int, level=0.95) -> Estimate:
-    """Mean of values between 0 and 1, for instance of conditional probabilities.
+    """Mean of values between 0 and 1, for instance of conditional probabilities; near 1 tally their complements instead.
 
     total, total_of_squares : sums of the values and of their squares over n samples
     The sample variance gives the number of yes-or-no samples that would know the mean equally well, at least n; the
-    exact binomial interval is taken at that number, so it stays honest where the mean is near 0 or 1.
+    exact binomial interval is taken at that number, so it stays honest where the mean is near 0 or 1. Where a few samples
+    carry most of the mean even this is too narrow (very skewed values: 90 % at n = 300).
     Source: E. L. Korn and B. I. Graubard, Survey Methodology 24, 193 (1998) (from memory).
     """
     mean = min(max(total / n, 0.0), 1.0)
     variance = max(total_of_squares / n - mean**2, 0.0) * n / max(n - 1, 1)
     effective = float(n)
-    if variance > 0 and 0 < mean < 1:
+    if variance > 8 * np.finfo(float).eps * mean**2 and mean < 1:  # less than that is rounding, not knowledge
         effective = min(max(n, n * mean * (1 - mean) / variance), MOST_EFFECTIVE)
     successes = mean * effective
     if min(successes, effective - successes) < LEAST_EVENTS:  # beyond what beta quantiles resolve: none at all
@@ -120,6 +125,10 @@ def sigma_kurtosis_aware(variance: float, kurtosis: float, n: int, level=0.95) -
     Source: D. G. Bonett, Comput. Stat. Data Anal. 50, 775 (2006) (from memory), with the plain kurtosis.
     """
     score = stats.norm.ppf((1 + level) / 2)
+    if n <= score:
+        return Estimate(
+            value=float(np.sqrt(variance)), low=0.0, high=np.inf, level=level, n=n, method="kurtosis-aware (Bonett)"
+        )
     correction = n / (n - score)
     error = correction * np.sqrt(max(kurtosis - (n - 3) / n, 0.0) / (n - 1))
     middle = np.sqrt(correction * variance)
@@ -135,6 +144,8 @@ def sigma_kurtosis_aware(variance: float, kurtosis: float, n: int, level=0.95) -
 
 def skew_interval(skew: float, n: int, level=0.95) -> Estimate:
     """Skewness with the error it has for nearly normal values: approximate.
+
+    Too narrow for markedly skewed ones (at a skewness of 0.5 it holds the truth in 89 % of cases, at 1 in 77 %).
 
     Source: R. A. Fisher, Proc. London Math. Soc. 30, 199 (1929): variance 6n(n-1)/((n-2)(n+1)(n+3)).
     """
@@ -182,10 +193,20 @@ class Summary:
         """Quantile by order statistics, from a `Tally`; a bound is infinite where the sample is too small to set one."""
         low, high = quantile_ranks(probability, self.n, self.level)
         at_rank = self.tally.value_at_rank
+
+        def bound(rank, side):
+            # beyond the histogram nothing is known of the places inside the end cell: its far end is the bound
+            ends = self.tally.cell_at_rank(self.output, rank)
+            return (
+                ends[side]
+                if ends[1] - ends[0] > 1.5 * self.tally.cell_width(self.output)
+                else at_rank(self.output, rank)
+            )
+
         return Estimate(
             value=at_rank(self.output, probability * self.n),
-            low=at_rank(self.output, low) if low >= 1 else -np.inf,
-            high=at_rank(self.output, high) if high <= self.n else np.inf,
+            low=bound(low, 0) if low >= 1 else -np.inf,
+            high=bound(high, 1) if high <= self.n else np.inf,
             level=self.level,
             n=self.n,
             method="order statistics",

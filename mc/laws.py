@@ -40,6 +40,7 @@ class Lognormal:
 
     def __post_init__(self):
         _require(0 < self.mean < np.inf and 0 <= self.sigma < np.inf, "a lognormal law needs mean > 0 and sigma >= 0")
+        _require(np.isfinite(self.shift), "a lognormal law needs a finite shift")
 
     def from_normal(self, z):
         """Value at the standard normal z (any shape)."""
@@ -56,7 +57,10 @@ class TruncatedNormal:
     cut: float
 
     def __post_init__(self):
-        _require(0 <= self.sigma < np.inf and self.cut > 0, "a truncated normal law needs sigma >= 0 and cut > 0")
+        _require(
+            np.isfinite(self.mean) and 0 <= self.sigma < np.inf and self.cut > 0,
+            "a truncated normal law needs a finite mean, sigma >= 0 and cut > 0",
+        )
 
     def from_normal(self, z):
         """Value at the standard normal z (any shape)."""

@@ -35,6 +35,8 @@ def run(task, plan: Plan, *, half_width=None, jobs=1, backend="loky", progress: 
     progress : called with samples done and samples aimed at, after every block
     Returns (tally, samples).
     """
+    if plan.precision is not None and half_width is None:
+        raise ValueError("a plan with a precision needs half_width, the measure that the precision speaks of")
     done, target, total = 0, plan.first_target(), None
     while done < target:
         for block, tally in zip(

@@ -14,7 +14,7 @@ REACH = 16  # sigmas on either side
 CELLS = 2 * REACH * CELLS_PER_SIGMA
 
 
-@dataclass(frozen=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Grid:
     """Where each output's tally is centered and how it is scaled.
 
@@ -26,13 +26,19 @@ class Grid:
 
     @classmethod
     def from_pilot(cls, values) -> "Grid":
-        """Grid from a pilot's outputs, shape (outputs, n). An output that does not vary gets a tiny scale."""
-        center = values.mean(axis=1)
-        floor = np.maximum(1e-9 * np.abs(center), np.finfo(float).tiny ** 0.5)
-        return cls(center=center, scale=np.maximum(values.std(axis=1), floor))
+        """Grid from a pilot's outputs, shape (outputs, n).
+
+        Equal values are their own center, to the last digit. Their scale is a billionth of it, or 1 about 0: later values
+        may differ from what the pilot saw, and their fourth power must neither overflow nor vanish.
+        """
+        first = values[:, :1]
+        moved = values - first
+        center = first[:, 0] + moved.mean(axis=1)
+        spread, least = moved.std(axis=1), 1e-9 * np.abs(center)
+        return cls(center=center, scale=np.where(spread > least, spread, np.where(least > 0, least, 1.0)))
 
 
-@dataclass(frozen=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Moments:
     """Power sums over samples of every output.
 
@@ -56,9 +62,10 @@ class Moments:
             tally["count"] += values.shape[1]
             for row, sample in enumerate(values):
                 scaled = (sample - grid.center[row]) * (1 / grid.scale[row])
-                if not np.isfinite(scaled.sum()):
+                total = scaled.sum()
+                if not np.isfinite(total):
                     raise FloatingPointError(f"output {row} of a model is not finite")
-                cls._take(tally, row, sample, scaled)
+                cls._take(tally, row, sample, scaled, total)
         return cls(grid=grid, **tally)
 
     @classmethod
@@ -66,12 +73,14 @@ class Moments:
         return {"count": 0, "powers": np.zeros((len(grid.center), 4))}
 
     @classmethod
-    def _take(cls, tally, row, sample, scaled):
+    def _take(cls, tally, row, sample, scaled, total):
         squared = scaled * scaled
         third, fourth = (np.einsum("i,i->", squared, other) for other in (scaled, squared))
-        tally["powers"][row] += scaled.sum(), squared.sum(), third, fourth
+        tally["powers"][row] += total, squared.sum(), third, fourth
 
     def __add__(self, other):
+        if not all(map(np.array_equal, (self.grid.center, self.grid.scale), (other.grid.center, other.grid.scale))):
+            raise ValueError("tallies of different grids cannot be added: prepare one experiment for the whole run")
         return type(self)(grid=self.grid, **self._sums(other))
 
     def _sums(self, other):
@@ -87,7 +96,7 @@ class Moments:
         return self.grid.center + scale * first, scale**2 * variance, scale**3 * skewed, scale**4 * peaked
 
 
-@dataclass(frozen=True, kw_only=True)
+@dataclass(frozen=True, kw_only=True, eq=False)
 class Tally(Moments):
     """Moments with a histogram and the extremes, so that quantiles can be read.
 
@@ -109,8 +118,8 @@ class Tally(Moments):
         }
 
     @classmethod
-    def _take(cls, tally, row, sample, scaled):
-        super()._take(tally, row, sample, scaled)
+    def _take(cls, tally, row, sample, scaled, total):
+        super()._take(tally, row, sample, scaled, total)
         place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.int32)
         tally["cells"][row] += np.bincount(place, minlength=CELLS)
         tally["smallest"][row] = min(tally["smallest"][row], sample.min())
@@ -129,14 +138,25 @@ class Tally(Moments):
         output : row; rank : 0 to count
         Returns the value in the output's unit; at and beyond the ends the smallest or the largest sample itself.
         """
+        low, high, share = self.cell_at_rank(output, rank)
+        return low + share * (high - low)
+
+    def cell_at_rank(self, output: int, rank: float) -> tuple[float, float, float]:
+        """Ends of the cell in which a rank lies, and how far inside it the rank is [1]; an end cell goes to the extreme."""
+        smallest, largest = float(self.smallest[output]), float(self.largest[output])
+        if rank <= 0 or rank >= self.count:
+            extreme = smallest if rank <= 0 else largest
+            return extreme, extreme, 0.0
         reached = np.cumsum(self.cells[output])
         cell = int(np.searchsorted(reached, rank))
-        if rank <= 0 or cell == 0:
-            return float(self.smallest[output])
-        if rank >= self.count or cell >= CELLS - 1:
-            return float(self.largest[output])
-        before = reached[cell - 1]
-        place = cell + (rank - before) / (reached[cell] - before)
-        scaled = place / CELLS_PER_SIGMA - REACH
-        value = self.grid.center[output] + self.grid.scale[output] * scaled
-        return float(np.clip(value, self.smallest[output], self.largest[output]))
+        before = reached[cell - 1] if cell else 0
+        ends = self.grid.center[output] + self.grid.scale[output] * (
+            np.array([cell, cell + 1]) / CELLS_PER_SIGMA - REACH
+        )
+        low = smallest if cell == 0 else max(float(ends[0]), smallest)
+        high = largest if cell == CELLS - 1 else min(float(ends[1]), largest)
+        return low, high, float((rank - before) / (reached[cell] - before))
+
+    def cell_width(self, output: int) -> float:
+        """Width of a histogram cell, in the output's unit."""
+        return float(self.grid.scale[output]) / CELLS_PER_SIGMA

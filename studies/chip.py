@@ -5,7 +5,7 @@ by either edge, is pulled by n and p devices in turn: ceil(N/2) of one and floor
 different devices, so a chip has 2 P independent path delays and passes a period T with F_a(T)^P F_b(T)^P.
 
 Approximations: a stage's load is that of its die's mean devices (the scatter of single gates averages over the fan-out
-and both devices). The local causes' effects on a delay multiply, corrected by factors measured on the nominal die.
+and both devices). The local causes' effects on a delay multiply, corrected by what a sample of the nominal die shows.
 """
 
 from dataclasses import dataclass, replace
@@ -15,7 +15,8 @@ from scipy.special import log_ndtr
 
 from mc.cumulants import (
     NODES,
-    interaction_factors,
+    Interaction,
+    measured_interaction,
     product_cumulants,
     score_from_value,
     score_of_largest,
@@ -47,7 +48,7 @@ class Stage:
     pull_down, pull_up : the n and the p device
     stages : per path [1]; fan_out : gates driven by each stage [1]
     wire_capacitance : per stage [F]; supply : [V]
-    interactions : factors on the cumulants of either side's delay, see `with_interactions`
+    interactions : corrections of either side's cumulants, see `with_interactions`
     """
 
     pull_down: Side
@@ -56,7 +57,7 @@ class Stage:
     fan_out: float
     wire_capacitance: float
     supply: float
-    interactions: tuple[np.ndarray, np.ndarray] = (np.ones(4), np.ones(4))
+    interactions: tuple[Interaction, Interaction] = (Interaction(), Interaction())
 
     @property
     def sides(self) -> tuple[Side, Side]:
@@ -104,19 +105,20 @@ class Stage:
     def with_interactions(self, seed: int) -> "Stage":
         """The stage with the interactions of its local causes measured on the nominal die, for use on every die."""
         load = self.load({})
-        factors = []
+        found = []
         for side in self.sides:
             streams = Streams(seed, 0, side.population.names(level="device"))
-            factors.append(interaction_factors(self._local_model(side, {}, load), streams.take(INTERACTION_SAMPLES)))
-        return replace(self, interactions=tuple(factors))
+            found.append(measured_interaction(self._local_model(side, {}, load), streams.take(INTERACTION_SAMPLES)))
+        return replace(self, interactions=tuple(found))
 
     def stage_cumulants(self, die) -> list[np.ndarray]:
         """First four cumulants of a stage's delay on every die, shape (4, dies) [s, s^2, s^3, s^4], for either side."""
         load = self.load(die)
         return [
-            product_cumulants(self._local_model(side, die, load), side.population.names(level="device"))
-            * factors[:, None]
-            for side, factors in zip(self.sides, self.interactions)
+            interaction.applied(
+                product_cumulants(self._local_model(side, die, load), side.population.names(level="device"))
+            )
+            for side, interaction in zip(self.sides, self.interactions)
         ]
 
     def path_cumulants(self, die) -> list[np.ndarray]:
@@ -138,14 +140,14 @@ def slowest_path(path_cumulants, normals, paths: int) -> np.ndarray:
     return np.maximum(*slowest)
 
 
-def pass_probability(path_cumulants, period, paths: int) -> np.ndarray:
-    """Probability that a chip on each die meets a period.
+def fail_probability(path_cumulants, period, paths: int) -> np.ndarray:
+    """Probability that a chip on each die misses a period; the failure, since near a yield of one it keeps its digits.
 
     period : [s], broadcasts with (dies,); paths : P
     Returns probability [1] of the broadcast shape.
     """
-    log_probability = 0.0
+    log_pass = 0.0
     for cumulants in path_cumulants:
         mean, sigma, skew, excess = standardise(cumulants)
-        log_probability = log_probability + paths * log_ndtr(score_from_value((period - mean) / sigma, skew, excess))
-    return np.exp(log_probability)
+        log_pass = log_pass + paths * log_ndtr(score_from_value((period - mean) / sigma, skew, excess))
+    return -np.expm1(log_pass)

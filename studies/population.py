@@ -6,7 +6,6 @@ the same door.
 """
 
 from collections.abc import Mapping
-from dataclasses import replace
 from functools import reduce
 from operator import add
 from typing import NamedTuple
@@ -77,8 +76,7 @@ class Population:
 
     def silicon(self, draws: Draws) -> Silicon:
         """Doping, oxide and flat band of the devices that the draws describe, arrays of the draws' shape."""
-        device = replace(
-            self.nominal,
+        device = self.nominal.varied(
             oxide_thickness=self.nominal.oxide_thickness * (1 + self._deviation(draws, "oxide_thickness")),
             profile=self.nominal.profile.scaled(1 + self._deviation(draws, "doping")),
             flat_band_shift=self._deviation(draws, "flat_band"),
@@ -97,7 +95,7 @@ class Population:
         thickness = silicon.device.oxide_thickness
         if (normal := self._normal(draws, "oxide_roughness")) is not None:
             thickness = thickness * (1 + geometry.oxide_sigma * normal)
-        return replace(silicon.device, width=width, length=length, oxide_thickness=thickness)
+        return silicon.device.varied(width=width, length=length, oxide_thickness=thickness)
 
     def scatter(self, draws: Draws, geometry: Geometry, device: Device, state: Electrostatics):
         """Signed shift of the threshold by dopants, grains and the measured remainder [V]."""

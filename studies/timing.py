@@ -20,7 +20,7 @@ from mc.runner import Progress, run
 from mc.search import first_crossing
 from mc.tally import Grid, Moments
 from studies.answer import Answer, columns_of, make_plan
-from studies.chip import Side, Stage, pass_probability, slowest_path
+from studies.chip import Side, Stage, fail_probability, slowest_path
 from studies.errors import InputError, one_line
 from studies.notes import model_notes, timing_sentences
 from studies.population import Population
@@ -63,15 +63,15 @@ class Question(WidthQuestion):
 
 @dataclass(frozen=True, kw_only=True)
 class TimingTally:
-    """Sums over dies: pass probabilities and their squares, shape (widths, periods), and the slowest path's moments."""
+    """Sums over dies: failure probabilities and their squares, shape (widths, periods), and the slowest path's moments."""
 
-    passes: np.ndarray
+    failures: np.ndarray
     squares: np.ndarray
     slowest: Moments
 
     def __add__(self, other):
         return TimingTally(
-            passes=self.passes + other.passes,
+            failures=self.failures + other.failures,
             squares=self.squares + other.squares,
             slowest=self.slowest + other.slowest,
         )
@@ -92,18 +92,18 @@ class Chips:
     periods: np.ndarray
 
     def __call__(self, block: Block) -> TimingTally:
-        passes, squares = np.zeros_like(self.periods), np.zeros_like(self.periods)
+        failures, squares = np.zeros_like(self.periods), np.zeros_like(self.periods)
         slowest = []
         for die in self.inputs.slices(block):
             rows = []
             for row, stage in enumerate(self.stages):
                 cumulants = stage.path_cumulants(die)
                 rows.append(slowest_path(cumulants, [die[name] for name in SLOWEST], self.paths))
-                passed = pass_probability(cumulants, self.periods[row][:, None], self.paths)
-                passes[row] += passed.sum(axis=1)
-                squares[row] += (passed * passed).sum(axis=1)
+                failed = fail_probability(cumulants, self.periods[row][:, None], self.paths)
+                failures[row] += failed.sum(axis=1)
+                squares[row] += (failed * failed).sum(axis=1)
             slowest.append(np.array(rows))
-        return TimingTally(passes=passes, squares=squares, slowest=Moments.of(self.grid, slowest))
+        return TimingTally(failures=failures, squares=squares, slowest=Moments.of(self.grid, slowest))
 
 
 def answer(
@@ -193,7 +193,8 @@ def _stages(question: Question, file: ProcessFile) -> tuple[Stage, ...]:
 
 
 def _yield(tally: TimingTally, row: int, column: int) -> Estimate:
-    return bounded_mean(float(tally.passes[row, column]), float(tally.squares[row, column]), tally.slowest.count)
+    failures, squares = float(tally.failures[row, column]), float(tally.squares[row, column])
+    return bounded_mean(failures, squares, tally.slowest.count).complement()
 
 
 def _yields_at_period(tally: TimingTally, widths: int) -> list[Estimate]:
