@@ -48,7 +48,8 @@ class Device:
     def varied(self, **changes) -> "Device":
         """The same device with some entries changed; what `dataclasses.replace` does, at a tenth of its cost.
 
-        Takes entries by name, in the units above. Returns a Device.
+        Takes entries by name, in the units above.
+        Returns a Device.
         """
         device = object.__new__(Device)
         device.__dict__.update(self.__dict__, **changes)

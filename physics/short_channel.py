@@ -54,7 +54,7 @@ def quasi_two_dimensional_length(oxide_thickness, depletion_width, eta=1.0):
     Returns length [m].
     Source: Z.-H. Liu et al., IEEE Trans. Electron Devices 40, 86 (1993) (model from memory).
     """
-    return np.sqrt(SILICON_PERMITTIVITY * oxide_thickness * depletion_width / (OXIDE_PERMITTIVITY * eta))
+    return np.sqrt(SILICON_PERMITTIVITY / (OXIDE_PERMITTIVITY * eta) * (oxide_thickness * depletion_width))
 
 
 def quasi_two_dimensional_shift(length_ratio, barrier, drain_voltage):
@@ -69,10 +69,11 @@ def quasi_two_dimensional_shift(length_ratio, barrier, drain_voltage):
     quadratic; with half-angle identities its root is (2a + V + 2 cosh(h) sqrt(a(a + V)))/(2 sinh^2 h), h = L/2l
     (own derivation).
     """
-    decay = np.exp(-length_ratio / 2)
-    root = np.sqrt(barrier * (barrier + drain_voltage))
+    decay = np.exp(-0.5 * length_ratio)
     squared = decay * decay
-    return 2 * decay * ((2 * barrier + drain_voltage) * decay + (1 + squared) * root) / (1 - squared) ** 2
+    at_drain = barrier + drain_voltage
+    root = np.sqrt(barrier * at_drain)
+    return 2 * decay * ((barrier + at_drain) * decay + (1 + squared) * root) / (1 - squared) ** 2
 
 
 @dataclass(frozen=True, kw_only=True)
