@@ -14,6 +14,8 @@ from scipy.special import ndtri
 
 _NORMALS = np.linspace(-8.5, 8.5, 17 * 64 + 1)  # the table's grid; linear interpolation errs below 1e-5 sigma
 _STEPS_PER_SIGMA = 400
+_FEWEST_CELLS = 8  # of a weight; many dopants need few, since their sum forgets the law of one
+_LARGEST_COUNT = 50_000  # above it the law is that of this count continued in 1/sqrt(count), its skew there 0.006
 _TILTS = (-5.0, -2.5, 0.0, 3.0, 6.0, 10.0)  # where the tilted means lie, in sigmas of the sum
 
 
@@ -67,12 +69,14 @@ def compound_poisson_quantiles(normal, mean_count, density):
     """
     rough = _lattice(density, 64)
     second = rough @ (np.arange(65) / 64) ** 2
-    cells = max(16, int(np.ceil(_STEPS_PER_SIGMA / np.sqrt(mean_count * second))))
+    cells = max(_FEWEST_CELLS, int(np.ceil(_STEPS_PER_SIGMA / np.sqrt(mean_count * second))))
     probability = _lattice(density, cells)
     weights = np.arange(cells + 1) / cells
     mean = mean_count * (probability @ weights)
     sigma = np.sqrt(mean_count * (probability @ weights**2))
-    size = 1 << int(np.ceil(np.log2(max(64 * sigma * cells, cells + 1))))
+    # 16 sigmas below the mean, and above it as far as the skewed upper tail reaches
+    reach = 40 if mean_count > 100 else 64
+    size = 1 << int(np.ceil(np.log2(max(reach * sigma * cells, cells + 1))))
     offset = max(0, int((mean - 16 * sigma) * cells))
     sums = (offset + np.arange(size)) / cells
 
@@ -127,6 +131,7 @@ class CountedLaw:
         density : see `compound_poisson_quantiles`
         Returns a CountedLaw.
         """
+        mean_count = min(mean_count, _LARGEST_COUNT)
         fewer, more = 0.8 * mean_count, 1.25 * mean_count
         at_nominal = compound_poisson_quantiles(_NORMALS, mean_count, density)
         at_fewer = compound_poisson_quantiles(_NORMALS, fewer, density)

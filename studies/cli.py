@@ -62,7 +62,10 @@ def _all_cores() -> int:
 
 def _field_flags(parser, model) -> None:
     """Flags of a record's fields: name, type, default and help come from the field itself."""
-    for name, field in model.model_fields.items():
+    from studies.validated import keys_of
+
+    for name, field_name in keys_of(model).items():
+        field = model.model_fields[field_name]
         text = str(field.annotation)
         many = "list" in text
         kind = int if "int" in text else float if "float" in text else str
@@ -107,6 +110,7 @@ def _run(arguments) -> int:
 
 def _ask(kind: str, arguments) -> int:
     from studies.settings import Settings
+    from studies.validated import keys_of
 
     model = question_module(kind).Question
     parser = Parser(prog=f"widthwise {kind}", description=model.__doc__.replace("%", "%%"), allow_abbrev=False)
@@ -117,7 +121,7 @@ def _ask(kind: str, arguments) -> int:
     given = vars(parser.parse_args(arguments))
     from studies.job import single_question
 
-    question = {name: given[name] for name in model.model_fields if name in given}
+    question = {name: given[name] for name in keys_of(model) if name in given}
     settings = {name: given[name] for name in Settings.model_fields if name in given}
     return _answer(single_question(kind, given["process"], question, settings), given)
 

@@ -26,8 +26,8 @@ HATCHES = ["", "//", "..", "\\\\", "xx", "--", "++", "oo", "**", "||"]
 def width_axis(axes, widths):
     """Logarithmic width axis with the asked widths as ticks, thinned where they would touch."""
     axes.set_xscale("log")
-    widths = list(widths)
-    apart = (widths[-1] / widths[0]) ** 0.09  # labels need about a tenth of the axis
+    widths = [float(f"{width:.3g}") for width in widths]
+    apart = (widths[-1] / widths[0]) ** 0.12  # labels need about an eighth of the axis
     ticks = widths[:1]
     for width in widths:
         if width > apart * ticks[-1]:
@@ -37,6 +37,14 @@ def width_axis(axes, widths):
     axes.xaxis.set_minor_formatter(NullFormatter())
     axes.minorticks_off()
     axes.set_xlabel("drawn width (um)")
+    return axes
+
+
+def plain_log_axis(axes):
+    """Logarithmic vertical axis with plain numbers at 1, 2, 3 and 5."""
+    axes.set_yscale("log")
+    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axes.yaxis.set_minor_formatter(FuncFormatter(lambda value, _: f"{value:g}" if f"{value:e}"[0] in "235" else ""))
     return axes
 
 
@@ -90,9 +98,7 @@ def sigma_against_width(axes, table):
             label="1/sqrt(W L) from the widest",
         )
     width_axis(axes, table.width_um)
-    axes.set_yscale("log")
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
-    axes.yaxis.set_minor_formatter(FuncFormatter(lambda value, _: f"{value:g}" if f"{value:e}"[0] in "235" else ""))
+    plain_log_axis(axes)
     axes.set_ylabel("sigma of the threshold (mV)")
     axes.legend(frameon=False)
     return axes
@@ -180,7 +186,47 @@ def _draw_timing(answer: Answer):
     return figure, f"{answer.process}: {question['paths']} paths of {question['stages']} stages"
 
 
-DRAWERS: dict[str, Any] = {"spread": _draw_spread, "timing": _draw_timing}
+def error_against_width(axes, curve, error: str, unit: str):
+    """Sigma of the pairs' error, and the straight 1/sqrt(W L) line laid from the widest device."""
+    with_interval(axes, curve, f"{error}_sigma", f"_{unit}", label="drawn pairs, 95 % interval")
+    widest = curve.iloc[-1]
+    line = widest[f"{error}_sigma_{unit}"] * np.sqrt(widest.width_um / curve.width_um)
+    axes.plot(curve.width_um, line, color=REFERENCE, ls="--", zorder=5, label="1/sqrt(W L) from the widest")
+    width_axis(axes, curve.width_um)
+    plain_log_axis(axes)
+    axes.set_ylabel(f"{error} sigma ({'mV' if unit == 'mv' else '%'})")
+    axes.legend(frameon=False)
+    return axes
+
+
+def chip_yield_against_width(axes, curve, target: float):
+    """Share of chips whose pairs are all inside, with the target and the answer marked."""
+    with_interval(axes, curve, "chip_yield", "", label="chips inside, 95 % interval", scale=100)
+    axes.axhline(100 * target, color=REFERENCE, ls="--", label=f"target {100 * target:g} %")
+    for row in curve[curve.is_minimum].itertuples():
+        axes.axvline(row.width_um, color=SPREAD, lw=1)
+        axes.annotate(
+            f"W = {row.width_um:g} um", (row.width_um, 4), xytext=(5, 0), textcoords="offset points", color=SPREAD
+        )
+    width_axis(axes, curve.width_um)
+    axes.set_ylim(-2, 104)
+    axes.set_ylabel("chips with all pairs inside (%)")
+    axes.legend(frameon=False)
+    return axes
+
+
+def _draw_pair(answer: Answer):
+    question = answer.question
+    error, unit = ("offset", "mv") if question["kind"] == "differential pair" else ("error", "percent")
+    shown = answer.tables["pair_shares"].length_um.iloc[0]
+    curve = answer.table[answer.table.length_um == shown]
+    figure, axes = plt.subplots(1, 2, figsize=(11, 4.6))
+    error_against_width(axes[0], curve, error, unit)
+    chip_yield_against_width(axes[1], curve, question["target_yield"])
+    return figure, f"{answer.process}: {question['kind']}, L = {shown:g} um, {question['pairs']} pairs a chip"
+
+
+DRAWERS: dict[str, Any] = {"spread": _draw_spread, "timing": _draw_timing, "pair": _draw_pair}
 
 
 def draw_all(job: Job, answers: list[Answer]) -> dict[str, bytes]:

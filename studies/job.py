@@ -25,7 +25,7 @@ class JobFile(Record):
     process: Annotated[dict[str, str], Field(min_length=1)]
     """process options: a short name and a file, seen from the job's folder"""
     question: Annotated[list[dict[str, Any]], Field(min_length=1, max_length=1000)]
-    """each has a kind, the process option or options it is asked of, and the kind's own keys"""
+    """each says what to ask, of which process option or options, and has the keys of that kind of question"""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -114,9 +114,9 @@ def single_question(kind: str, process: Path, question: dict[str, Any], settings
 
 
 def _read_question(entry: dict[str, Any], where: str):
-    kind = entry.pop("kind", None)
+    kind = entry.pop("ask", None)
     if kind not in SUMMARIES:
-        raise InputError(f"{where}.kind = {one_line(repr(kind))}: {nearest(str(kind), SUMMARIES)}")
+        raise InputError(f"{where}.ask = {one_line(repr(kind))}: {nearest(str(kind), SUMMARIES)}")
     names = entry.pop("process", None)
     names = [names] if isinstance(names, str) else names
     if not isinstance(names, list) or not names or not all(isinstance(name, str) for name in names):

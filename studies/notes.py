@@ -92,3 +92,57 @@ def timing_sentences(question, rows, min_width) -> tuple[str, ...]:
         f"{target}: the smallest width is W = {min_width.value:.4g} um [{min_width.low:.4g}, {high}], interpolated "
         "between the widths asked for.",
     )
+
+
+def pair_sentences(question, process: str, best, lengths: int) -> tuple[str, ...]:
+    """The pair answer in words. best : the search of the smallest area, or the last when none met the target"""
+    tally, row = best.judged[best.shown_width()]
+    target = (
+        f"{process}, {question.kind}, {question.pairs} pairs a chip, {100 * question.target_yield:g} % of chips within "
+        f"{question.limit * question.error_words[2]:g} {'mV' if question.limit_mv else '%'}"
+    )
+    reached = tally.chip_yield(row)
+    best_reached = f"{100 * reached.value:.4g} % [{100 * reached.low:.4g}, {100 * reached.high:.4g}] of chips"
+    if not best.met:
+        needed = tally.worst_quantile(row, question.target_yield)
+        if needed.value <= question.limit:
+            return (f"{target}: met already at the narrowest width considered.",)
+        return (
+            f"Cannot be met: {target} is not reached at any width up to W = {best.shown_width():g} um, L = "
+            f"{best.biasing.length_um:g} um; the best reached is {best_reached}.",
+        )
+    width = best.width
+    high = f"{width.high:.4g}" if np.isfinite(width.high) else "not bounded by these samples"
+    sentence = (
+        f"{target}: the smallest width is W = {width.value:.4g} um [{width.low:.4g}, {high}] at L = "
+        f"{best.biasing.length_um:g} um, {question.fingers} finger{'s' if question.fingers > 1 else ''}, gate area of a "
+        f"pair {best.area(width.value):.4g} um2; there {best_reached} stay inside."
+    )
+    return (sentence + (" It has the smallest area of the lengths asked for." if lengths > 1 else ""),)
+
+
+def pair_notes(question, population: Population, best, rows) -> list[str]:
+    """What a designer of pairs should know of this answer."""
+    notes = ["Offset and error come from the two drawn devices at their operating point, both saturated."]
+    needed = int(np.ceil(np.log(0.025) / np.log(question.target_yield)))
+    if not np.isfinite(best.width.high) and best.samples < needed:
+        notes.append(
+            f"{best.samples} chips cannot bound a yield of {question.target_yield:g}: at least {needed} chips are needed "
+            f"(--samples {needed}), some {10 * needed} for a useful interval."
+        )
+    scatter = population.record.scatter
+    if question.distance_um == 0 and (scatter.distance_pair_uv_per_um or scatter.gradient_uv_per_um):
+        notes.append("distance_um is 0: the process file's distance terms have no effect.")
+    if scatter.gate_edge_nm == 0:
+        notes.append(
+            "No gate-edge roughness is given and none of the causes depends on length but by area: real short channels "
+            "scatter more than 1/sqrt(W L). Measure a pair at the shortest length, or give gate_edge_nm."
+        )
+    for _, curve in rows.groupby("length_um"):
+        falls = curve.chip_yield.shift(-1) < curve.chip_yield_low
+        if falls.any():
+            notes.append(
+                f"The yield is not monotone in width: it falls beyond W = {curve.width_um[falls].iloc[0]:.4g} um. The width "
+                "given is the smallest from which on it stays above the target."
+            )
+    return notes

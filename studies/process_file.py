@@ -173,6 +173,10 @@ class Scatter(Record):
     """measured pair coefficient of whatever is not modelled above: sigma of the DIFFERENCE of a pair times sqrt(W L)"""
     current_factor_pair_percent_um: NotNegative = 0.0
     """measured pair coefficient of the current factor"""
+    distance_pair_uv_per_um: NotNegative = 0.0
+    """measured distance coefficient of a pair: sigma of the difference per distance, beyond the area law"""
+    gradient_uv_per_um: NotNegative = 0.0
+    """sigma over dies of the threshold's linear gradient across the die"""
 
     @model_validator(mode="after")
     def _partners(self):

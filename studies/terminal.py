@@ -107,7 +107,40 @@ def timing_tables(answer: Answer) -> list[Table]:
     return [_table(title, columns, rows)]
 
 
-TABLES = {"spread": spread_tables, "timing": timing_tables}
+def pair_tables(answer: Answer) -> list[Table]:
+    """Error and yield against width, what each length costs, and what makes the error."""
+    error, unit = ("offset", "mv") if answer.question["kind"] == "differential pair" else ("error", "percent")
+    shown = "mV" if unit == "mv" else "%"
+    rows = [
+        [
+            f"{row['length_um']:g}",
+            f"{row['width_um']:.4g}" + (" <" if row["is_minimum"] else "  "),
+            f"{row['area_um2']:.4g}",
+            _plus_minus(row, f"{error}_sigma", f"_{unit}", 4),
+            f"{row['gm_over_i_per_v']:.1f}",
+            _bounds(row, "chip_yield", "", 2, 100),
+        ]
+        for row in answer.table.to_dict("records")
+    ]
+    title = f"Pairs: {one_line(answer.process)}, {answer.question['kind']}, {answer.samples} chips; < marks the answer"
+    columns = ["L um", "W um  ", "area um2", f"{error} sigma {shown}", "gm/I 1/V", "chips inside %"]
+    shares = answer.tables["pair_shares"]
+    parts = [
+        [
+            row["part"].replace("_", " "),
+            _plus_minus(row, f"{error}_sigma", f"_{unit}", 3),
+            _plus_minus(row, "share", "", 1, 100),
+        ]
+        for row in shares.sort_values("share", ascending=False).to_dict("records")
+    ]
+    where = f"at L = {shares.length_um.iloc[0]:g} um, W = {shares.width_um.iloc[0]:.4g} um"
+    return [
+        _table(title, columns, rows),
+        _table(f"What makes the {error} {where}", ["cause", f"sigma {shown}", "of the variance %"], parts),
+    ]
+
+
+TABLES = {"spread": spread_tables, "timing": timing_tables, "pair": pair_tables}
 
 
 def show(answers: list[Answer], out: Console) -> None:

@@ -53,8 +53,8 @@ class Question(WidthQuestion):
     """wire per stage"""
     width_ratio: Annotated[float, Field(gt=0, le=20)] = 2.0
     """p width over n width; width_um is that of the n device"""
-    target_yield: Annotated[float, Field(gt=0, lt=1)] = 0.99
-    """yield to be met"""
+    target_yield: Annotated[float, Field(gt=0, lt=1, alias="yield")] = 0.99
+    """share of chips wanted"""
     n_device: str = "n"
     """device that pulls down"""
     p_device: str = "p"

@@ -4,6 +4,7 @@ from physics.constants import ELEMENTARY_CHARGE
 
 SUFFIXES = {  # longest endings first, so that "_mv_um" is not read as "_um"
     "percent_um": 1e-8,  # [m]; a relative coefficient in % um
+    "uv_per_um": 1.0,  # [V/m]
     "mv_um": 1e-9,  # [V m]
     "cm2_per_vs": 1e-4,  # [m^2/(V s)]
     "cm_per_s": 1e-2,  # [m/s]
@@ -18,6 +19,7 @@ SUFFIXES = {  # longest endings first, so that "_mv_um" is not read as "_um"
     "mv": 1e-3,  # [V]
     "ev": 1.0,  # [V]; a work function divided by the elementary charge
     "v": 1.0,  # [V]
+    "ua": 1e-6,  # [A]
     "ps": 1e-12,  # [s]
     "ff": 1e-15,  # [F]
 }

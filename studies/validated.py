@@ -22,10 +22,16 @@ class Record(BaseModel):
     @classmethod
     def _known_keys(cls, data):
         if isinstance(data, dict):
+            known = keys_of(cls)
             for key in data:
-                if key not in cls.model_fields:
-                    raise ValueError(_unknown_key(key, cls.model_fields))
+                if key not in known:
+                    raise ValueError(_unknown_key(key, known))
         return data
+
+
+def keys_of(model: type[Record]) -> dict[str, str]:
+    """The keys a person writes, each with the name of its field."""
+    return {field.alias or name: name for name, field in model.model_fields.items()}
 
 
 def _unknown_key(key, fields) -> str:

@@ -27,7 +27,7 @@ def documented():
                             yield pytest.param(name, units, id=f"{path.stem}.{node.name}.{name}")
 
 
-@pytest.mark.parametrize("name, units", documented())
+@pytest.mark.parametrize("name, units", list(documented()))
 def test_a_physical_name_has_the_glossary_unit(name, units):
     assert name in glossary(), f"'{name}' is not in the glossary"
     assert units <= glossary()[name]
