@@ -7,9 +7,6 @@ from scipy import stats
 
 from mc.tally import Moments
 
-LEAST_EVENTS = 1e-6
-MOST_EFFECTIVE = 1e18  # up to here beta quantiles are right to 1e-9
-
 
 @dataclass(frozen=True, kw_only=True)
 class Estimate:
@@ -76,22 +73,21 @@ def bounded_mean(total: float, total_of_squares: float, n: int, level=0.95) -> E
     """Mean of values between 0 and 1, for instance of conditional probabilities; near 1 tally their complements instead.
 
     total, total_of_squares : sums of the values and of their squares over n samples
-    The sample variance gives the number of yes-or-no samples that would know the mean equally well, at least n; the
-    exact binomial interval is taken at that number, so it stays honest where the mean is near 0 or 1. Where a few samples
-    carry most of the mean even this is too narrow (very skewed values: 90 % at n = 300).
-    Source: E. L. Korn and B. I. Graubard, Survey Methodology 24, 193 (1998) (from memory).
+    A gamma law of the sample's mean and variance; for the upper bound one further value of 1 is supposed, so that a rare
+    large value which the sample did not meet is allowed for: with no loss at all the bound is 3.7/n.
+    Source: M. P. Fay and E. J. Feuer, Stat. Med. 16, 791 (1997) (from memory), with the central variance.
     """
+    tail = (1 - level) / 2
     mean = min(max(total / n, 0.0), 1.0)
-    variance = max(total_of_squares / n - mean**2, 0.0) * n / max(n - 1, 1)
-    effective = float(n)
-    if variance > 8 * np.finfo(float).eps * mean**2 and mean < 1:  # less than that is rounding, not knowledge
-        effective = min(max(n, n * mean * (1 - mean) / variance), MOST_EFFECTIVE)
-    successes = mean * effective
-    if min(successes, effective - successes) < LEAST_EVENTS:  # beyond what beta quantiles resolve: none at all
-        successes = round(mean) * effective
-    binomial = fraction_exact(successes, effective, level)
+    variance = max(total_of_squares / n - mean**2, 0.0) / max(n - 1, 1)
+    low = mean
+    if variance > 0 and mean > 0:
+        low = stats.gamma.ppf(tail, mean**2 / variance, scale=variance / mean)
+    one = 1 / n
+    spread = variance + one**2
+    high = stats.gamma.ppf(1 - tail, (mean + one) ** 2 / spread, scale=spread / (mean + one))
     return Estimate(
-        value=mean, low=binomial.low, high=binomial.high, level=level, n=n, method="exact binomial at effective n"
+        value=mean, low=float(low), high=min(float(high), 1.0), level=level, n=n, method="gamma (Fay and Feuer)"
     )
 
 

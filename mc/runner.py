@@ -23,8 +23,15 @@ def run_blocks(task: Callable[[Block], Any], blocks: Iterable[Block], *, jobs=1,
     """
     if jobs == 1:
         return (task(block) for block in blocks)
+    if backend == "multiprocessing":  # joblib hands its results on only when all are there: a few blocks at a time
+        return _in_lots(task, list(blocks), Parallel(n_jobs=jobs, backend=backend), 4 * jobs)
     parallel = Parallel(n_jobs=jobs, backend=backend, return_as="generator", pre_dispatch="3*n_jobs")
     return parallel(delayed(task)(block) for block in blocks)
+
+
+def _in_lots(task, blocks, parallel, size):
+    for start in range(0, len(blocks), size):
+        yield from parallel(delayed(task)(block) for block in blocks[start : start + size])
 
 
 def run(task, plan: Plan, *, half_width=None, jobs=1, backend="loky", progress: Progress = _quiet):

@@ -48,7 +48,7 @@ def _tilted_probabilities(mean_count, probability, tilt, offset, size):
     """Log probability of the sums offset..offset+size-1 (in lattice steps), through the law tilted by `tilt`."""
     cells = probability.size - 1
     weights = np.arange(cells + 1) / cells
-    tilted = probability * np.exp(tilt * weights)
+    tilted = probability * np.exp(np.minimum(tilt * weights, 600))
     tilted_count = mean_count * tilted.sum()
     transform = np.fft.rfft(mean_count * tilted, size)
     wrapped = np.fft.irfft(np.exp(transform - tilted_count), size)
@@ -81,13 +81,16 @@ def compound_poisson_quantiles(normal, mean_count, density):
     sums = (offset + np.arange(size)) / cells
 
     def tilted_excess(tilt, target):
-        return mean_count * (probability * weights) @ np.exp(tilt * weights) - target
+        return mean_count * (probability * weights) @ np.exp(np.minimum(tilt * weights, 600)) - target
 
     targets = np.unique(np.maximum(mean + sigma * np.array(_TILTS), 0.02 * mean))
     nearest = np.abs(sums[:, None] - targets).argmin(axis=1)
     log_probability = np.empty(size)
     for index, target in enumerate(targets):
-        tilt = brentq(tilted_excess, -400, 60, args=(target,))
+        reach = 60.0
+        while tilted_excess(reach, target) < 0 or tilted_excess(-reach, target) > 0:
+            reach *= 4
+        tilt = brentq(tilted_excess, -reach, reach, args=(target,))
         chosen = nearest == index
         log_probability[chosen] = _tilted_probabilities(mean_count, probability, tilt, offset, size)[chosen]
     mass = np.exp(log_probability)

@@ -9,6 +9,8 @@ import numpy as np
 
 from physics.constants import OXIDE_PERMITTIVITY, SILICON_PERMITTIVITY
 
+LEAST_LENGTH_RATIO = 1.5  # channel lengths over the decay length for the quasi-two-dimensional form to have a meaning
+
 
 class ChannelTooShort(ValueError):
     """A channel outside the range of its short-channel formula; refused, never clamped."""
@@ -115,11 +117,17 @@ class QuasiTwoDimensional:
         length : effective channel length [m]
         oxide_thickness : gate oxide [m]
         drain_voltage : drain to source [V], >= 0
-        Returns factor [1], < 1.
+        Returns factor [1], < 1. Raises ChannelTooShort below LEAST_LENGTH_RATIO decay lengths.
         Source: `quasi_two_dimensional_shift`.
         """
         decay = quasi_two_dimensional_length(oxide_thickness, electrostatics.depletion_width, self.eta)
-        shift = quasi_two_dimensional_shift(length / decay, electrostatics.junction_barrier, drain_voltage)
+        ratio = length / decay
+        if np.min(ratio) < LEAST_LENGTH_RATIO:
+            raise ChannelTooShort(
+                f"{1e9 * np.min(length):.0f} nm is shorter than {LEAST_LENGTH_RATIO:g} decay lengths of the junctions' field, "
+                f"{1e9 * LEAST_LENGTH_RATIO * np.max(decay):.0f} nm: no barrier is left"
+            )
+        shift = quasi_two_dimensional_shift(ratio, electrostatics.junction_barrier, drain_voltage)
         return 1 - shift * OXIDE_PERMITTIVITY / oxide_thickness / electrostatics.bulk_charge
 
 

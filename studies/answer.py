@@ -8,6 +8,7 @@ import pandas as pd
 from mc.intervals import Estimate
 from mc.plan import Plan
 from studies.settings import Settings
+from studies.validated import Record
 
 MOST_SAMPLES = 10**10  # where a precision-driven run gives up
 
@@ -50,6 +51,12 @@ def columns_of(name: str, estimate: Estimate, unit: str = "") -> dict[str, float
     """An estimate as three columns, the unit at the end of each name: name_unit, name_low_unit, name_high_unit."""
     end = f"_{unit}" if unit else ""
     return {f"{name}{end}": estimate.value, f"{name}_low{end}": estimate.low, f"{name}_high{end}": estimate.high}
+
+
+def asked_columns(question: Record, row: dict) -> dict[str, object]:
+    """What else was asked, so that rows of two questions can be told apart: the question's keys that `row` lacks."""
+    asked = question.model_dump()
+    return {key: value for key, value in asked.items() if key not in row and not isinstance(value, list)}
 
 
 def make_plan(settings: Settings, *, default_samples: int, block_size: int) -> Plan:

@@ -3,6 +3,7 @@
 import argparse
 import json
 import os
+import re
 import sys
 from pathlib import Path
 
@@ -14,7 +15,11 @@ DONE, NOT_MET, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
 
 
 class Parser(argparse.ArgumentParser):
-    """A parser whose errors are one line."""
+    """A parser whose errors are one line, and to which -2e1 is a number."""
+
+    def __init__(self, *args, **options):
+        super().__init__(*args, **options)
+        self._negative_number_matcher = re.compile(r"^-(\d+\.?\d*|\.\d+)([eE][-+]?\d+)?$")
 
     def error(self, message):
         raise InputError(f"{self.prog}: {one_line(message)}; see {self.prog} --help")
@@ -132,6 +137,7 @@ def _answer(job, given) -> int:
     from studies.validated import validated
 
     workers = validated(Workers, {"jobs": given["jobs"], "backend": given["backend"]}, "command line")
+    job.check()
     if given["out"]:
         record.check_folder(given["out"], job, given["replace"])
     with terminal.progress_bar(len(job.asked)) as start:
@@ -139,7 +145,7 @@ def _answer(job, given) -> int:
     if given["out"]:
         record.write(given["out"], job, answers, workers)
     if given["json"]:
-        print(json.dumps(record.answers_json(job, answers), indent=2, ensure_ascii=False))
+        print(json.dumps(record.answers_json(job, answers), indent=2))
     else:
         terminal.show(answers, terminal.console())
     if given["out"]:
@@ -150,28 +156,42 @@ def _answer(job, given) -> int:
 def main(arguments=None) -> int:
     """Run the command line; returns the exit code."""
     arguments = sys.argv[1:] if arguments is None else list(arguments)
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")  # a plus-minus sign must not end a run on a plain terminal
     try:
-        if not arguments or arguments[0].startswith("-"):
-            overview = _overview()
-            if not arguments:
-                overview.print_help()
-                return BAD_INPUT
-            overview.parse_args(arguments)
-            return DONE
-        command, *rest = arguments
-        if command == "new":
-            return _new(rest)
-        if command == "run":
-            return _run(rest)
-        if command in SUMMARIES:
-            return _ask(command, rest)
-        raise InputError(f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'run', *SUMMARIES])}")
+        code = _command(arguments)
+        sys.stdout.flush()
+        return code
     except InputError as error:
         print(error, file=sys.stderr)
         return BAD_INPUT
     except KeyboardInterrupt:
         print("stopped; nothing was written", file=sys.stderr)
         return INTERRUPTED
+    except OSError as error:  # the reader went away, or the disk behind the standard output is full
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        print(f"the standard output cannot be written ({error.strerror})", file=sys.stderr)
+        return BAD_INPUT
+
+
+def _command(arguments) -> int:
+    """Run one command; returns the exit code."""
+    if not arguments or arguments[0].startswith("-"):
+        overview = _overview()
+        if not arguments:
+            overview.print_help()
+            return BAD_INPUT
+        overview.parse_args(arguments)
+        return DONE
+    command, *rest = arguments
+    if command == "new":
+        return _new(rest)
+    if command == "run":
+        return _run(rest)
+    if command in SUMMARIES:
+        return _ask(command, rest)
+    raise InputError(f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'run', *SUMMARIES])}")
 
 
 if __name__ == "__main__":

@@ -16,13 +16,16 @@ def write_demo(folder: Path) -> list[Path]:
         key=lambda item: item.name,
     )
     targets = [folder / source.name for source in sources]
-    for target in targets:
-        if target.exists():
-            raise InputError(f"{one_line(target)}: is there already; choose another folder")
     try:
+        for target in targets:
+            if target.exists():
+                raise InputError(f"{one_line(target)}: is there already; choose another folder")
         folder.mkdir(parents=True, exist_ok=True)
         for source, target in zip(sources, targets):
             target.write_bytes(source.read_bytes())
-    except OSError as error:
-        raise InputError(f"{one_line(folder)}: cannot be written ({error.strerror})") from None
+    except InputError:
+        raise
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or error
+        raise InputError(f"{one_line(folder)}: cannot be written ({one_line(reason)})") from None
     return targets

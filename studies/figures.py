@@ -16,6 +16,7 @@ import seaborn as sns
 from matplotlib.ticker import FuncFormatter, NullFormatter
 
 from studies.answer import Answer
+from studies.errors import inert
 from studies.job import Job
 
 PALETTE = sns.color_palette("colorblind", 10)
@@ -135,10 +136,10 @@ def shares_against_width(axes, shares, causes):
     return axes
 
 
-def yield_against_width(axes, table):
+def yield_against_width(axes, table, target: float):
     """Timing yield at the period with its interval, and the target."""
     with_interval(axes, table, "yield", "", label="timing yield, 95 % interval", scale=100)
-    target = 100 * table.target_yield.iloc[0]
+    target = 100 * target
     axes.axhline(target, color=REFERENCE, ls="--", label=f"target {target:g} %")
     width_axis(axes, table.width_um)
     axes.set_ylabel(f"chips within {table.period_ps.iloc[0]:g} ps (%)")
@@ -146,7 +147,7 @@ def yield_against_width(axes, table):
     return axes
 
 
-def period_against_width(axes, table):
+def period_against_width(axes, table, target: float):
     """Slowest path of the chips, and the period that meets the target."""
     mean, sigma = table.slowest_mean_ps, table.slowest_sigma_ps
     axes.fill_between(
@@ -158,7 +159,7 @@ def period_against_width(axes, table):
         lw=0,
         label="spread: slowest path, one sigma",
     )
-    target = 100 * table.target_yield.iloc[0]
+    target = 100 * target
     with_interval(axes, table, "period_at_target", "_ps", label=f"period for {target:g} %, 95 % interval")
     axes.axhline(table.period_ps.iloc[0], color=REFERENCE, ls="--", label="period asked for")
     width_axis(axes, table.width_um)
@@ -180,9 +181,9 @@ def _draw_spread(answer: Answer):
 
 def _draw_timing(answer: Answer):
     figure, axes = plt.subplots(1, 2, figsize=(11, 4.6))
-    yield_against_width(axes[0], answer.table)
-    period_against_width(axes[1], answer.table)
     question = answer.question
+    yield_against_width(axes[0], answer.table, question["yield"])
+    period_against_width(axes[1], answer.table, question["yield"])
     return figure, f"{answer.process}: {question['paths']} paths of {question['stages']} stages"
 
 
@@ -222,7 +223,7 @@ def _draw_pair(answer: Answer):
     curve = answer.table[answer.table.length_um == shown]
     figure, axes = plt.subplots(1, 2, figsize=(11, 4.6))
     error_against_width(axes[0], curve, error, unit)
-    chip_yield_against_width(axes[1], curve, question["target_yield"])
+    chip_yield_against_width(axes[1], curve, question["yield"])
     return figure, f"{answer.process}: {question['kind']}, L = {shown:g} um, {question['pairs']} pairs a chip"
 
 
@@ -237,7 +238,7 @@ def draw_all(job: Job, answers: list[Answer]) -> dict[str, bytes]:
     with matplotlib.rc_context({"svg.hashsalt": "widthwise", "svg.fonttype": "none"}):
         for asked, answer in zip(job.asked, answers):
             figure, title = DRAWERS[answer.kind](answer)
-            figure.suptitle(title.replace("$", r"\$"))
+            figure.suptitle(inert(title).replace("$", r"\$"))
             sns.despine(figure)
             figure.tight_layout()
             for kind in ("png", "svg"):

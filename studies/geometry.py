@@ -2,18 +2,15 @@
 
 from dataclasses import dataclass, replace
 
-import numpy as np
-
 from physics import dopants, roughness, short_channel, threshold
 from physics.counted import CountedLaw, layered_weight_density
 from physics.device import Device
 from studies.errors import InputError
-from studies.process_file import LEVELS
 from studies.process_file import Device as DeviceRecord
 from studies.units import SUFFIXES, si
+from studies.variation import CLEAR_SIGMAS, largest_fall
 
 FEWEST_DOPANTS = 2.0
-CLEAR_SIGMAS = 8  # a channel's dimension must exceed this many sigmas of its variation
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -43,10 +40,12 @@ class Geometry:
     counted: CountedLaw | None
 
 
-def make_geometry(nominal: Device, record: DeviceRecord, where: str, width_um: float, length_um: float) -> Geometry:
+def make_geometry(
+    nominal: Device, record: DeviceRecord, inputs, where: str, width_um: float, length_um: float
+) -> Geometry:
     """Geometry of a drawn width and length.
 
-    where : file and device, for messages
+    inputs : the device's random inputs; where : file and device, for messages
     Raises InputError for a width or a length that its bias or its variation eats up, a width outside an edge's table, a
     channel too short for its formula, or one with hardly a dopant under it.
     """
@@ -60,14 +59,24 @@ def make_geometry(nominal: Device, record: DeviceRecord, where: str, width_um: f
     except short_channel.ChannelTooShort as error:
         raise InputError(f"{where}: length_um = {length_um:g}: {error}") from None
     scatter = record.scatter
+    gate_edge_sigma = _edge_sigma(scatter, "gate_edge", width)
+    active_edge_sigma = _edge_sigma(scatter, "active_edge", length)
+    _check_clear(inputs, where, "width", width, "active_edge_nm", active_edge_sigma)
+    _check_clear(inputs, where, "length", length, "gate_edge_nm", gate_edge_sigma)
+    oxide_sigma = _oxide_sigma(scatter, sized)
+    if oxide_sigma * CLEAR_SIGMAS >= 1:
+        raise InputError(
+            f"{where}.scatter.oxide_roughness_nm = {scatter.oxide_roughness_nm:g}: {CLEAR_SIGMAS:g} sigmas of the mean "
+            "oxide thickness must leave some oxide"
+        )
     fringe_shape = sized.edge.shape if scatter.fringe_dopants else 0.0
     return Geometry(
         width=width,
         length=length,
         drawn_width=width_um * SUFFIXES["um"],
-        gate_edge_sigma=_edge_sigma(scatter, "gate_edge", width),
-        active_edge_sigma=_edge_sigma(scatter, "active_edge", length),
-        oxide_sigma=_oxide_sigma(scatter, sized),
+        gate_edge_sigma=gate_edge_sigma,
+        active_edge_sigma=active_edge_sigma,
+        oxide_sigma=oxide_sigma,
         grain_sigma=_grain_sigma(scatter, sized),
         remainder_sigma=float(roughness.area_law_sigma(si(scatter, "remainder_pair_mv_um"), width, length)),
         current_factor_sigma=float(
@@ -83,14 +92,17 @@ def _electrical(record: DeviceRecord, where: str, drawn_um: float, dimension: st
     electrical = drawn_um * SUFFIXES["um"] + bias * SUFFIXES["nm"]
     if electrical <= 0:
         raise InputError(f"{where}.{dimension}_bias_nm = {bias:g}: leaves nothing of {dimension}_um = {drawn_um:g}")
-    spread = getattr(record.variation, dimension)
-    sigma_nm = float(np.sqrt(sum(getattr(spread, f"{level}_nm") ** 2 for level in LEVELS)))
-    if electrical < CLEAR_SIGMAS * sigma_nm * SUFFIXES["nm"]:
-        raise InputError(
-            f"{where}.variation.{dimension}: a sigma of {sigma_nm:g} nm is too large for {dimension}_um = {drawn_um:g}; "
-            f"{CLEAR_SIGMAS} sigmas must leave something of the channel"
-        )
     return electrical
+
+
+def _check_clear(inputs, where: str, dimension: str, electrical: float, edge_key: str, edge_sigma: float) -> None:
+    varying = [item for item in inputs if item.cause == dimension]
+    if electrical <= largest_fall(varying, edge_sigma):
+        key = f"variation.{dimension}" if largest_fall(varying) > CLEAR_SIGMAS * edge_sigma else f"scatter.{edge_key}"
+        raise InputError(
+            f"{where}.{key}: too large for an electrical {dimension} of {electrical * 1e6:g} um; {CLEAR_SIGMAS:g} sigmas "
+            "must leave something of the channel"
+        )
 
 
 def _check_edge_table(device: Device, where: str) -> None:

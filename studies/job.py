@@ -16,6 +16,8 @@ from studies.questions import SUMMARIES, question_module
 from studies.settings import Settings, Workers
 from studies.validated import Record, read_toml, validated
 
+LONGEST_NAME = 60
+
 
 class JobFile(Record):
     """A job as a person writes it."""
@@ -37,6 +39,10 @@ class Asked:
     file: ProcessFile
     question: Record
 
+    def check(self) -> None:
+        """Raise InputError for whatever can be known to be wrong before any sampling."""
+        question_module(self.kind).check(self.question, self.file)
+
     def answer(self, settings: Settings, workers: Workers, progress) -> Answer:
         """Answer the question."""
         return question_module(self.kind).answer(self.question, self.file, settings, workers, progress)
@@ -49,6 +55,11 @@ class Job:
     title: str
     settings: Settings
     asked: tuple[Asked, ...]
+
+    def check(self) -> None:
+        """Check every question before the first is answered. Raises InputError."""
+        for asked in self.asked:
+            asked.check()
 
     def answers(self, workers: Workers, start) -> list[Answer]:
         """Answer every question. start : function of number and name that gives a progress callback.
@@ -73,7 +84,7 @@ class Job:
             "asked": [
                 {
                     "name": each.name,
-                    "question": each.question.model_dump(),
+                    "question": each.question.model_dump(by_alias=True),
                     "process": each.file.process.model_dump(),
                     "measured": [sha256(path.read_bytes()).hexdigest() for path in each.file.measured_files()],
                 }
@@ -87,7 +98,14 @@ def load_job(path, overrides: dict[str, Any]) -> Job:
     """A job from its file. overrides : settings given on the command line. Raises InputError in one line."""
     path = Path(path)
     record = validated(JobFile, read_toml(path), path)
-    files = {name: load_process(path.parent / file, name) for name, file in record.process.items()}
+    files = {}
+    for name, file in record.process.items():
+        if not usable_name(name):
+            raise InputError(
+                f"{one_line(path)}: process.{one_line(name)}: a short name is needed, up to {LONGEST_NAME} characters that "
+                "can be part of a file's name"
+            )
+        files[name] = load_process(path.parent / file, name)
     asked = []
     for number, entry in enumerate(record.question, start=1):
         where = f"{one_line(path)}: question {number}"
@@ -99,9 +117,14 @@ def load_job(path, overrides: dict[str, Any]) -> Job:
     return Job(title=record.title, settings=override(record.settings, overrides, path), asked=tuple(asked))
 
 
+def usable_name(name: str) -> bool:
+    """Whether a name can be part of a file's name."""
+    return 0 < len(name) <= LONGEST_NAME and name.isprintable() and not set(name) & set('/\\:*?"<>|')
+
+
 def single_question(kind: str, process: Path, question: dict[str, Any], settings: dict[str, Any]) -> Job:
     """A job of one question, as the command line asks it. Raises InputError in one line."""
-    file = load_process(process)
+    file = load_process(process, process.stem if usable_name(process.stem) else "process")
     asked = Asked(
         name=f"{kind}_1_{file.name}",
         kind=kind,
@@ -115,7 +138,7 @@ def single_question(kind: str, process: Path, question: dict[str, Any], settings
 
 def _read_question(entry: dict[str, Any], where: str):
     kind = entry.pop("ask", None)
-    if kind not in SUMMARIES:
+    if not isinstance(kind, str) or kind not in SUMMARIES:
         raise InputError(f"{where}.ask = {one_line(repr(kind))}: {nearest(str(kind), SUMMARIES)}")
     names = entry.pop("process", None)
     names = [names] if isinstance(names, str) else names
@@ -128,6 +151,7 @@ def _read_question(entry: dict[str, Any], where: str):
 
 def override(settings: Settings, given: dict[str, Any], where) -> Settings:
     """Settings with those given on the command line put in; a precision there beats samples in the file, and so on."""
+    validated(Settings, given, "command line")
     kept = settings.model_dump(exclude_none=True)
     if {"samples", "precision"} & given.keys():
         kept = {key: value for key, value in kept.items() if key not in ("samples", "precision")}

@@ -14,8 +14,14 @@ def read_column(path: Path, column: str) -> tuple[float, ...]:
             reader = csv.DictReader(file)
             if column not in (reader.fieldnames or []):
                 raise InputError(f"{where}: no column '{one_line(column)}'; {nearest(column, reader.fieldnames or [])}")
-            rows = [(reader.line_num, row[column]) for row in reader]
-    except (OSError, UnicodeDecodeError, csv.Error) as error:
+            rows = []
+            for row in reader:
+                if None in row:
+                    raise InputError(f"{where}: line {reader.line_num}: more cells than columns (a decimal comma?)")
+                rows.append((reader.line_num, row[column]))
+    except InputError:
+        raise
+    except (OSError, ValueError, csv.Error) as error:
         raise InputError(f"{where}: cannot be read ({getattr(error, 'strerror', None) or one_line(error)})") from None
     values = []
     for line, text in rows:

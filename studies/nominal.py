@@ -14,6 +14,8 @@ INTRINSIC_DENSITY = {
     "sproul green": silicon.intrinsic_density,
     "misiakos tsamakis": silicon.intrinsic_density_misiakos,
 }
+FIT_RANGE = {"sproul green": (200.0, 500.0), "misiakos tsamakis": (78.0, 340.0)}  # [K]
+LEAST_DOPING_RATIO = 10.0  # over the intrinsic density; below it full depletion and Boltzmann mean nothing
 
 
 def _edge(record) -> edges.Edge:
@@ -61,11 +63,18 @@ def nominal_device(file: ProcessFile, name: str, *, body_bias_v: float, temperat
     Raises InputError for a surface layer deeper than the depletion region.
     """
     record = file.device(name)
+    density = file.process.intrinsic_density
     temperature = (file.process.temperature_c if temperature_c is None else temperature_c) + ZERO_CELSIUS
+    coldest, hottest = FIT_RANGE[density]
+    if not coldest <= temperature <= hottest:
+        raise InputError(
+            f"{one_line(file.path)}: intrinsic_density = '{density}': the fit holds from {coldest - ZERO_CELSIUS:g} to "
+            f"{hottest - ZERO_CELSIUS:g} C; {temperature - ZERO_CELSIUS:g} C is asked for"
+        )
     device = Device(
         polarity=1.0 if record.channel == "n" else -1.0,
         temperature=temperature,
-        intrinsic_density=float(INTRINSIC_DENSITY[file.process.intrinsic_density](temperature)),
+        intrinsic_density=float(INTRINSIC_DENSITY[density](temperature)),
         width=1.0,
         length=1.0,
         oxide_thickness=si(record, "oxide_thickness_nm"),
@@ -78,10 +87,31 @@ def nominal_device(file: ProcessFile, name: str, *, body_bias_v: float, temperat
         quantum_shift=record.quantum_shift,
         gate_doping=np.inf if record.gate_doping_per_cm3 is None else si(record, "gate_doping_per_cm3"),
     )
-    depletion = threshold.electrostatics(device).depletion_width
-    if record.surface_depth_nm is not None and si(record, "surface_depth_nm") >= depletion:
-        raise InputError(
-            f"{one_line(file.path)}: device.{one_line(name)}.surface_depth_nm = {record.surface_depth_nm:g}: must be less "
-            f"than the depletion width, {depletion * 1e9:.1f} nm here; deeper, only surface_doping_per_cm3 counts"
-        )
+    _check(device, record, f"{one_line(file.path)}: device.{one_line(name)}")
     return device
+
+
+def _check(device: Device, record: DeviceRecord, where: str) -> None:
+    """Refuse what the physics has no answer for, before it gives one."""
+    celsius = device.temperature - ZERO_CELSIUS
+    least = LEAST_DOPING_RATIO * device.intrinsic_density
+    for key in ("doping_per_cm3", "surface_doping_per_cm3"):
+        if getattr(record, key) is not None and si(record, key) < least:
+            raise InputError(
+                f"{where}.{key} = {getattr(record, key):g}: at {celsius:g} C the silicon is intrinsic; at least "
+                f"{least / SUFFIXES['per_cm3']:.2g} is needed"
+            )
+    if record.edge.kind == "trench" and si(record.edge, "field_oxide_nm") <= device.oxide_thickness:
+        raise InputError(
+            f"{where}.edge.field_oxide_nm = {record.edge.field_oxide_nm:g}: must be more than oxide_thickness_nm"
+        )
+    state = threshold.electrostatics(device)
+    if record.short_channel.kind == "quasi two-dimensional" and state.junction_barrier <= 0:
+        raise InputError(
+            f"{where}.doping_per_cm3 = {record.doping_per_cm3:g}: no barrier is left between source and channel"
+        )
+    if record.surface_depth_nm is not None and si(record, "surface_depth_nm") >= state.depletion_width:
+        raise InputError(
+            f"{where}.surface_depth_nm = {record.surface_depth_nm:g}: must be less than the depletion width, "
+            f"{state.depletion_width * 1e9:.1f} nm here; deeper, only surface_doping_per_cm3 counts"
+        )

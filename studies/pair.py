@@ -16,7 +16,7 @@ from mc.plan import Plan
 from mc.runner import Progress, run
 from mc.search import crossing_of_decreasing
 from mc.sensitivity import variance_share
-from studies.answer import Answer, columns_of, make_plan
+from studies.answer import Answer, asked_columns, columns_of, make_plan
 from studies.biasing import Biasing
 from studies.notes import model_notes, pair_notes, pair_sentences
 from studies.pair_question import Question
@@ -27,7 +27,7 @@ from studies.settings import Settings, Workers
 from studies.units import SUFFIXES, si
 from studies.variation import CAUSES
 
-__all__ = ["Question", "answer"]
+__all__ = ["Question", "answer", "check"]
 
 BLOCK = 8192
 DRAWS_AT_ONCE = 200_000  # a slice's chips times its random numbers
@@ -37,14 +37,21 @@ SHARE_CHIPS = 20_000
 TOLERANCES = {"value": 2e-4, "low": 2e-3, "high": 2e-3}  # of the limit; the bounds need less than the answer
 
 
+def check(question: Question, file: ProcessFile) -> None:
+    """Raise InputError for what can be known to be wrong before any sampling."""
+    population = _population(question, file)
+    for length in question.length_um:
+        biasing = Biasing(question, _arrangement(question, population), length)
+        for width in (question.width_min_um, question.width_max_um):
+            biasing.candidate(width)
+
+
 def answer(
     question: Question, file: ProcessFile, settings: Settings, workers: Workers, progress: Progress = lambda *_: None
 ) -> Answer:
     """Answer a pair question. Raises InputError where the physics has no answer."""
     started = perf_counter()
-    population = Population(
-        file, question.device, body_bias_v=question.body_bias_v, temperature_c=question.temperature_c
-    )
+    population = _population(question, file)
     arrangement = _arrangement(question, population)
     searches = []
     for length in question.length_um:
@@ -65,7 +72,7 @@ def answer(
     return Answer(
         kind="pair",
         process=file.name,
-        question=question.model_dump(),
+        question=question.model_dump(by_alias=True),
         table=rows,
         tables={"pair_lengths": lengths, "pair_shares": shares},
         headlines=best.headlines(),
@@ -77,6 +84,10 @@ def answer(
         seconds=perf_counter() - started,
         met=best.met,
     )
+
+
+def _population(question: Question, file: ProcessFile) -> Population:
+    return Population(file, question.device, body_bias_v=question.body_bias_v, temperature_c=question.temperature_c)
 
 
 def _arrangement(question: Question, population: Population) -> Arrangement:
@@ -188,7 +199,7 @@ class Search:
         error, unit, scale = self.question.error_words
         sigma = Summary(tally.every, 2 * row).sigma().scaled(scale)
         size = Summary(tally.every, 2 * row + 1).quantile(0.999).scaled(scale)
-        return (
+        columns = (
             self._identity(file)
             | {"width_um": width_um, "area_um2": self.area(width_um)}
             | {f"{error}_sigma_{unit}": sigma.value, f"{error}_p99_9_{unit}": size.value}
@@ -199,6 +210,7 @@ class Search:
             | {"is_minimum": bool(self.met and width_um == self.width.value), "samples": tally.worst.count}
             | self.biasing.operating_point(width_um)
         )
+        return columns | asked_columns(self.question, columns)
 
     def _identity(self, file: ProcessFile) -> dict:
         question = self.question

@@ -64,7 +64,7 @@ class Population:
 
     def geometry(self, width_um: float, length_um: float) -> Geometry:
         """A drawn width and length; raises InputError, see `make_geometry`."""
-        return make_geometry(self.nominal, self.record, self.where, width_um, length_um)
+        return make_geometry(self.nominal, self.record, self.inputs, self.where, width_um, length_um)
 
     def _deviation(self, draws: Draws, cause: str):
         """Deviation from nominal, the levels added up; 0 where none is drawn."""

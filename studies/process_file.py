@@ -97,6 +97,9 @@ class Spread(Record):
             and any(empirical)
         ):
             raise ValueError('law = "empirical" needs values_csv, values_column and values_level, and they need it')
+        for name, value in self:
+            if self.values_level is not None and name.startswith(f"{self.values_level}_") and value:
+                raise ValueError(f"'{name}' has no effect: that level has measured values; remove one of them")
         return self
 
 
@@ -189,6 +192,13 @@ class Scatter(Record):
         for size, partner in pairs.items():
             if getattr(self, size) > 0 and getattr(self, partner) is None:
                 raise ValueError(f"'{size}' needs '{partner}'")
+            if getattr(self, size) == 0 and getattr(self, partner) is not None:
+                raise ValueError(f"'{partner}' has no effect without '{size}'; remove it")
+        given = self.model_fields_set
+        if "edge_correlation" in given and self.gate_edge_nm == 0 and self.active_edge_nm == 0:
+            raise ValueError("'edge_correlation' has no effect without rough edges; remove it")
+        if "grain_cells" in given and self.grain_mv == 0:
+            raise ValueError("'grain_cells' has no effect without 'grain_mv'; remove it")
         return self
 
 
@@ -236,6 +246,8 @@ class Device(Record):
     def _consistent(self):
         if (self.gate is None) == (self.gate_work_function_ev is None):
             raise ValueError("exactly one of 'gate' and 'gate_work_function_ev' is needed")
+        if self.gate is None and self.gate_doping_per_cm3 is not None:
+            raise ValueError("'gate_doping_per_cm3' goes with a polysilicon 'gate'; a metal does not deplete")
         if (self.surface_doping_per_cm3 is None) != (self.surface_depth_nm is None):
             raise ValueError("'surface_doping_per_cm3' and 'surface_depth_nm' go together")
         if self.short_channel.kind == "charge sharing" and self.junction_depth_nm is None:

@@ -22,28 +22,41 @@ LIBRARIES = ("numpy", "scipy", "pandas", "joblib", "pydantic")
 
 
 def check_folder(folder: Path, job: Job, replace: bool) -> None:
-    """Refuse a folder that is not one, cannot be written, or holds another job's results. Writes nothing.
+    """Refuse a folder that is not one, cannot be written, or holds anything but this job's results. Writes nothing.
 
     Raises InputError.
     """
     where = one_line(folder)
-    if folder.exists() and not folder.is_dir():
-        raise InputError(f"{where}: is a file, a folder is needed")
-    parent = next(place for place in (folder, *folder.absolute().parents) if place.exists())
-    if not os.access(parent, os.W_OK):
-        raise InputError(f"{where}: cannot be written")
-    found = _old_record(folder)
-    if found is not None and found.get("fingerprint") != job.fingerprint() and not replace:
-        raise InputError(f"{where}: holds the results of another job; choose another folder or add --replace")
-
-
-def _old_record(folder: Path) -> dict | None:
     try:
-        return json.loads((folder / RECORD).read_text(encoding="utf-8"))
-    except FileNotFoundError:
-        return None
-    except (OSError, ValueError):
-        return {}  # a record that cannot be read is another job's
+        if folder.exists() and not folder.is_dir():
+            raise InputError(f"{where}: is a file, a folder is needed")
+        parent = next(place for place in (folder, *folder.absolute().parents) if place.exists())
+        if not os.access(parent, os.W_OK):
+            raise InputError(f"{where}: cannot be written")
+        filled = folder.exists() and any(folder.iterdir())
+    except InputError:
+        raise
+    except (OSError, ValueError) as error:
+        raise InputError(f"{where}: cannot be used ({one_line(getattr(error, 'strerror', None) or error)})") from None
+    if filled and _old_record(folder).get("fingerprint") != job.fingerprint() and not replace:
+        held = "the results of another job" if (folder / RECORD).exists() else "files that are no results of this job"
+        raise InputError(f"{where}: holds {held}; choose another folder or add --replace")
+
+
+def _old_record(folder: Path) -> dict:
+    """What the folder's record says; empty when there is none, or none of ours."""
+    try:
+        found = json.loads((folder / RECORD).read_text(encoding="utf-8"))
+    except (OSError, ValueError, RecursionError):
+        return {}
+    return found if isinstance(found, dict) else {}
+
+
+def _old_files(folder: Path) -> list[Path]:
+    """Files that an earlier run wrote, by its own record."""
+    names = _old_record(folder).get("files")
+    names = [name for name in names if isinstance(name, str)] if isinstance(names, list) else []
+    return [folder / name for name in names if name.isprintable() and Path(name).name == name]
 
 
 def plain(value):
@@ -93,7 +106,7 @@ def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[s
                 {
                     "name": asked.name,
                     "process_file": asked.file.path.name,
-                    "question": asked.question.model_dump(),
+                    "question": asked.question.model_dump(by_alias=True),
                     "samples": answer.samples,
                     "block_size": answer.block_size,
                     "device_evaluations": answer.evaluations,
@@ -125,19 +138,19 @@ def write(folder: Path, job: Job, answers: list[Answer], workers: Workers) -> li
     """
     from studies.figures import draw_all  # the drawing library is slow to import
 
+    contents = {
+        f"{name}.csv": table.to_csv(index=False, lineterminator="\n").encode()
+        for name, table in tables_of(answers).items()
+    }
+    contents |= draw_all(job, answers)
+    contents["answers.json"] = _encoded(answers_json(job, answers))
+    files = [*contents, RECORD]
+    contents[RECORD] = _encoded(record_json(job, answers, workers, files))
     try:
         folder.mkdir(parents=True, exist_ok=True)
-        for name in (_old_record(folder) or {}).get("files", []):
-            if Path(name).name == name:
-                (folder / name).unlink(missing_ok=True)
-        contents = {
-            f"{name}.csv": table.to_csv(index=False, lineterminator="\n").encode()
-            for name, table in tables_of(answers).items()
-        }
-        contents |= draw_all(job, answers)
-        contents["answers.json"] = _encoded(answers_json(job, answers))
-        files = [*contents, RECORD]
-        contents[RECORD] = _encoded(record_json(job, answers, workers, files))
+        for old in _old_files(folder):
+            if old.name not in contents:
+                old.unlink(missing_ok=True)
         for name, content in contents.items():
             partial = folder / f".{name}.partial"
             partial.write_bytes(content)

@@ -19,7 +19,7 @@ from mc.runner import Progress, run
 from mc.sensitivity import variance_share
 from mc.tally import Moments
 from physics.edges import NoEdge
-from studies.answer import Answer, columns_of, make_plan
+from studies.answer import Answer, asked_columns, columns_of, make_plan
 from studies.errors import InputError
 from studies.geometry import Geometry
 from studies.notes import model_notes, spread_sentences
@@ -80,16 +80,17 @@ class Part:
     share: Estimate
 
 
+def check(question: Question, file: ProcessFile) -> None:
+    """Raise InputError for what can be known to be wrong before any sampling."""
+    _prepared(question, file)
+
+
 def answer(
     question: Question, file: ProcessFile, settings: Settings, workers: Workers, progress: Progress = lambda *_: None
 ) -> Answer:
     """Answer a spread question. Raises InputError where the physics has no answer."""
     started = perf_counter()
-    population = Population(
-        file, question.device, body_bias_v=question.body_bias_v, temperature_c=question.temperature_c
-    )
-    geometries = tuple(population.geometry(width, question.length_um) for width in question.width_um)
-    groups = _groups(population)
+    population, geometries, groups = _prepared(question, file)
     inputs = Inputs(seed=settings.seed, names=groups["all"], copula=population.copula)
 
     def model(names):
@@ -115,11 +116,11 @@ def answer(
     return Answer(
         kind="spread",
         process=file.name,
-        question=question.model_dump(),
+        question=question.model_dump(by_alias=True),
         table=table,
         tables={"spread_shares": _share_table(question, file, parts)},
         headlines={
-            f"vth_sigma_mv at width_um {width:g}": Summary(tally, row).sigma().scaled(1e3)
+            f"vth_sigma_mv at width_um {width:.15g}": Summary(tally, row).sigma().scaled(1e3)
             for row, width in enumerate(question.width_um)
         },
         sentences=spread_sentences(table.to_dict("records")),
@@ -129,6 +130,14 @@ def answer(
         evaluations=len(geometries) * (samples + share_plan.samples * len(groups)),
         seconds=perf_counter() - started,
     )
+
+
+def _prepared(question: Question, file: ProcessFile):
+    population = Population(
+        file, question.device, body_bias_v=question.body_bias_v, temperature_c=question.temperature_c
+    )
+    geometries = tuple(population.geometry(width, question.length_um) for width in question.width_um)
+    return population, geometries, _groups(population)
 
 
 def _relative_half_width(estimate: Estimate) -> float:
@@ -189,8 +198,14 @@ def _table(question, file, population, geometries, summaries, parts) -> pd.DataF
         quantiles = {name: summary.quantile(probability) for name, probability in QUANTILES.items()}
         row |= {f"{name}_v": quantile.value for name, quantile in quantiles.items()}
         row |= {f"share_{name}": part.share.value for name, part in mine.items()}
-        row["share_sum_of_causes"] = sum(part.share.value for name, part in mine.items() if name in CAUSES)
+        causes = [part.share for name, part in mine.items() if name in CAUSES]
+        row["share_sum_of_causes"] = sum(share.value for share in causes)
         row |= {"vth_skew_low": summary.skew().low, "vth_skew_high": summary.skew().high}
+        for name, part in mine.items():
+            row |= {f"share_{name}_low": part.share.low, f"share_{name}_high": part.share.high}
+        # the shares' errors are not independent: added up they bound the sum's
+        row["share_sum_of_causes_low"] = sum(share.low for share in causes)
+        row["share_sum_of_causes_high"] = sum(share.high for share in causes)
         for name, quantile in quantiles.items():
             row |= {f"{name}_low_v": quantile.low, f"{name}_high_v": quantile.high}
         row["vth_nominal_v"] = float(population.thresholds({}, geometry, silicon, question.drain_v))
@@ -198,6 +213,6 @@ def _table(question, file, population, geometries, summaries, parts) -> pd.DataF
         if local is not None:
             row |= columns_of("vth_device_sigma", local, "mv")
             ratio = np.sqrt(geometries[-1].width / geometry.width)
-            row["vth_device_sigma_area_law_mv"] = device_sigmas[-1].value * ratio
-        rows.append(row)
+            row |= columns_of("vth_device_sigma_area_law", device_sigmas[-1].scaled(ratio), "mv")
+        rows.append(row | asked_columns(question, row))
     return pd.DataFrame(rows)

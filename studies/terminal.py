@@ -1,26 +1,36 @@
 """What a person reads without opening a file: tables of 80 columns, and progress on the error stream."""
 
+import errno
 import sys
 from contextlib import contextmanager
 
 from rich.console import Console
+from rich.measure import Measurement
 from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 from rich.table import Table
 from rich.text import Text
 
 from studies.answer import Answer
-from studies.errors import one_line
+from studies.errors import inert, one_line
 from studies.notes import CAUTION
 
 WIDTH = 80
 LARGEST_CAUSES = 4
 
 
+class Printer(Console):
+    """A console that leaves a reader who went away to the command line, instead of ending the program itself."""
+
+    def on_broken_pipe(self) -> None:
+        """Hand the broken pipe on."""
+        raise BrokenPipeError(errno.EPIPE, "nobody reads it")
+
+
 def console(stream=None) -> Console:
     """Console that never takes text from a file for markup; 80 columns unless a terminal says otherwise."""
     stream = stream or sys.stdout
     width = None if stream.isatty() else WIDTH
-    return Console(file=stream, width=width, markup=False, highlight=False, emoji=False)
+    return Printer(file=stream, width=width, markup=False, highlight=False, emoji=False)
 
 
 def _plus_minus(row, name: str, unit: str, digits: int, scale=1.0) -> str:
@@ -68,9 +78,9 @@ def spread_tables(answer: Answer) -> list[Table]:
     reasons = []
     for row in rows:
         mine = shares[shares.width_um == row["width_um"]].set_index("part")
-        local = [f"{row['vth_device_sigma_mv']:.2f}", f"{row['vth_device_sigma_area_law_mv']:.2f}"]
+        local = [row.get(name) for name in ("vth_device_sigma_mv", "vth_device_sigma_area_law_mv")]
         reasons.append(
-            [f"{row['width_um']:g}", *(local if "vth_device_sigma_mv" in row else ["-", "-"])]
+            [f"{row['width_um']:g}", *("-" if sigma is None else f"{sigma:.2f}" for sigma in local)]
             + [f"{100 * mine.share[cause]:.1f} ±{_half_width(mine, cause):.1f}" for cause in largest]
         )
     second = _table(
@@ -88,7 +98,7 @@ def _half_width(shares, part: str) -> float:
 def timing_tables(answer: Answer) -> list[Table]:
     """Yield, slowest path and the period that the target needs."""
     question = answer.question
-    target = f"{100 * question['target_yield']:g} %"
+    target = f"{100 * question['yield']:g} %"
     rows = [
         [
             f"{row['width_um']:g}",
@@ -147,15 +157,23 @@ def show(answers: list[Answer], out: Console) -> None:
     """Print every answer: sentences, tables, notes; the caution at the end."""
     for answer in answers:
         for sentence in answer.sentences:
-            out.print(Text(sentence, style="bold"))
+            out.print(Text(inert(sentence), style="bold"))
         out.print()
         for table in TABLES[answer.kind](answer):
-            out.print(table)
+            _print_whole(table, out)
             out.print()
         for note in dict.fromkeys(answer.notes):
-            out.print(Text(f"* {note}"))
+            out.print(Text(f"* {inert(note)}"))
         out.print()
     out.print(Text(CAUTION, style="italic"))
+
+
+def _print_whole(table: Table, out: Console) -> None:
+    """Print a table at its own width where that exceeds the console's: a cut number reads as another one."""
+    usual = out.width
+    out.width = max(usual, Measurement.get(out, out.options.update(max_width=10_000), table).maximum)
+    out.print(table)
+    out.width = usual
 
 
 @contextmanager

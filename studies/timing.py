@@ -19,7 +19,7 @@ from mc.plan import Block
 from mc.runner import Progress, run
 from mc.search import first_crossing
 from mc.tally import Grid, Moments
-from studies.answer import Answer, columns_of, make_plan
+from studies.answer import Answer, asked_columns, columns_of, make_plan
 from studies.chip import Side, Stage, fail_probability, slowest_path
 from studies.errors import InputError, one_line
 from studies.notes import model_notes, timing_sentences
@@ -106,6 +106,11 @@ class Chips:
         return TimingTally(failures=failures, squares=squares, slowest=Moments.of(self.grid, slowest))
 
 
+def check(question: Question, file: ProcessFile) -> None:
+    """Raise InputError for what can be known to be wrong before any sampling."""
+    _stages(question, file)
+
+
 def answer(
     question: Question, file: ProcessFile, settings: Settings, workers: Workers, progress: Progress = lambda *_: None
 ) -> Answer:
@@ -129,12 +134,14 @@ def answer(
     table = _table(question, file, tally, yields, periods)
     met = bool(np.isfinite(min_width.value))
     headlines = {"min_width_um": min_width}
-    headlines |= {f"yield at width_um {width:g}": mine for width, mine in zip(question.width_um, yields)}
-    headlines |= {f"period_at_target_ps at width_um {width:g}": mine for width, mine in zip(question.width_um, periods)}
+    headlines |= {f"yield at width_um {width:.15g}": mine for width, mine in zip(question.width_um, yields)}
+    headlines |= {
+        f"period_at_target_ps at width_um {width:.15g}": mine for width, mine in zip(question.width_um, periods)
+    }
     return Answer(
         kind="timing",
         process=file.name,
-        question=question.model_dump(),
+        question=question.model_dump(by_alias=True),
         table=table,
         headlines=headlines,
         sentences=timing_sentences(question, table.to_dict("records"), min_width),
@@ -241,14 +248,15 @@ def _table(question: Question, file: ProcessFile, tally: TimingTally, yields, pe
     for row, width in enumerate(question.width_um):
         slowest = Summary(tally.slowest, row)
         mean, sigma = slowest.mean().scaled(picoseconds), slowest.sigma().scaled(picoseconds)
-        rows.append(
+        row_columns = (
             {"process": file.name, "width_um": width, "period_ps": question.period_ps}
             | columns_of("yield", yields[row])
             | {"slowest_mean_ps": mean.value, "slowest_sigma_ps": sigma.value}
             | {"period_at_target_ps": periods[row].value}
-            | {"length_um": question.length_um, "target_yield": question.target_yield, "samples": slowest.n}
+            | {"length_um": question.length_um, "samples": slowest.n}
             | {"slowest_mean_low_ps": mean.low, "slowest_mean_high_ps": mean.high}
             | {"slowest_sigma_low_ps": sigma.low, "slowest_sigma_high_ps": sigma.high}
             | {"period_at_target_low_ps": periods[row].low, "period_at_target_high_ps": periods[row].high}
         )
+        rows.append(row_columns | asked_columns(question, row_columns))
     return pd.DataFrame(rows)

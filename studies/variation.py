@@ -33,6 +33,7 @@ SCATTER = {  # cause of the scatter within one device, and the process-file key 
     "current_factor": "current_factor_pair_percent_um",
 }
 CAUSES = (*QUANTITIES, *SCATTER)
+CLEAR_SIGMAS = 8.0  # a quantity must stay above zero this far out
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -62,7 +63,10 @@ def _law(kind, sigma, relative, cut) -> Law:
 
 
 def _measured_law(spread, unit, folder) -> Empirical:
-    values = np.array(read_column(folder / spread.values_csv, spread.values_column))
+    path = folder / spread.values_csv
+    values = np.array(read_column(path, spread.values_column))
+    if unit == "percent" and values.min() <= 0:
+        raise InputError(f"{one_line(path)}: {one_line(spread.values_column)} = {values.min():g}: must be above 0")
     deviations = values / values.mean() - 1 if unit == "percent" else (values - values.mean()) * SUFFIXES[unit]
     return Empirical(values=tuple(deviations))
 
@@ -82,10 +86,25 @@ def random_inputs(file: ProcessFile, device: str) -> tuple[RandomInput, ...]:
             else:
                 continue
             inputs.append(RandomInput(name=f"{device}.{quantity}.{level}", cause=quantity, level=level, law=law))
+        if unit == "percent" and largest_fall([item for item in inputs if item.cause == quantity]) >= 1:
+            raise InputError(
+                f"{one_line(file.path)}: device.{one_line(device)}.variation.{quantity}: so large that some devices would "
+                f"have none; {CLEAR_SIGMAS:g} sigmas of all levels together must stay below 100 percent"
+            )
     for cause, key in SCATTER.items():
         if getattr(record.scatter, key) not in ("off", 0.0):
             inputs.append(RandomInput(name=f"{device}.{cause}.device", cause=cause, level="device"))
     return tuple(inputs)
+
+
+def largest_fall(inputs, *local_sigmas: float) -> float:
+    """How far a quantity may fall below nominal: CLEAR_SIGMAS of the normal parts together, and all of the others.
+
+    inputs : random inputs of one quantity; local_sigmas : further normal parts in the same unit
+    """
+    normal = [item.law.sigma for item in inputs if isinstance(item.law, Normal)]
+    others = sum(-float(item.law.from_normal(-CLEAR_SIGMAS)) for item in inputs if not isinstance(item.law, Normal))
+    return CLEAR_SIGMAS * float(np.sqrt(sum(sigma**2 for sigma in (*normal, *local_sigmas)))) + others
 
 
 def copula(file: ProcessFile) -> Copula:

