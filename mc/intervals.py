@@ -77,6 +77,8 @@ def bounded_mean(total: float, total_of_squares: float, n: int, level=0.95) -> E
     large value which the sample did not meet is allowed for: with no loss at all the bound is 3.7/n.
     Source: M. P. Fay and E. J. Feuer, Stat. Med. 16, 791 (1997) (from memory), with the central variance.
     """
+    if total > n - total:  # what may have been missed is then a rare small value
+        return bounded_mean(n - total, n - 2 * total + total_of_squares, n, level).complement()
     tail = (1 - level) / 2
     mean = min(max(total / n, 0.0), 1.0)
     variance = max(total_of_squares / n - mean**2, 0.0) / max(n - 1, 1)

@@ -59,6 +59,15 @@ def asked_columns(question: Record, row: dict) -> dict[str, object]:
     return {key: value for key, value in asked.items() if key not in row and not isinstance(value, list)}
 
 
+def precision_notes(settings: Settings, samples: int) -> list[str]:
+    """A note when a precision was asked for and the most that is spent on it did not reach it."""
+    if settings.precision is not None and samples >= MOST_SAMPLES:
+        return [
+            f"The precision of {settings.precision:g} was not reached with {samples} samples, the most that is spent."
+        ]
+    return []
+
+
 def make_plan(settings: Settings, *, default_samples: int, block_size: int) -> Plan:
     """The plan that the settings ask for."""
     if settings.precision is not None:

@@ -169,9 +169,13 @@ def main(arguments=None) -> int:
     except KeyboardInterrupt:
         print("stopped; nothing was written", file=sys.stderr)
         return INTERRUPTED
-    except OSError as error:  # the reader went away, or the disk behind the standard output is full
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())  # so that leaving does not try again
+        print("the reader of the standard output went away", file=sys.stderr)
+        return BAD_INPUT
+    except OSError as error:  # a full disk behind the standard output, no memory for a worker, ...
+        print(f"widthwise: {one_line(error.strerror or error)}", file=sys.stderr)
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        print(f"the standard output cannot be written ({error.strerror})", file=sys.stderr)
         return BAD_INPUT
 
 

@@ -42,7 +42,9 @@ def width_axis(axes, widths):
 
 
 def plain_log_axis(axes):
-    """Logarithmic vertical axis with plain numbers at 1, 2, 3 and 5."""
+    """Logarithmic vertical axis with plain numbers at 1, 2, 3 and 5; linear when all that is drawn is zero."""
+    if all(np.max(line.get_ydata(), initial=0) <= 0 for line in axes.get_lines()):
+        return axes
     axes.set_yscale("log")
     axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
     axes.yaxis.set_minor_formatter(FuncFormatter(lambda value, _: f"{value:g}" if f"{value:e}"[0] in "235" else ""))

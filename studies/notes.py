@@ -5,6 +5,7 @@ import numpy as np
 from physics.edges import FieldOxide, TabulatedEdge, Trench
 from physics.short_channel import LongChannel, QuasiTwoDimensional
 from studies.population import Population
+from studies.variation import CAUSES
 
 CAUTION = (
     "Planning estimates. Sign-off belongs to the foundry's qualified models, to silicon data and to the people "
@@ -53,14 +54,12 @@ def model_notes(population: Population) -> list[str]:
 def spread_sentences(answer_rows) -> tuple[str, ...]:
     """The spread in words. answer_rows : rows of spread.csv, narrowest first, as dictionaries."""
     first, last = answer_rows[0], answer_rows[-1]
-    causes = {
-        name: first[name] for name in first if name.startswith("share_") and "level" not in name and "sum" not in name
-    }
+    causes = {cause: first[f"share_{cause}"] for cause in CAUSES if f"share_{cause}" in first}
     largest = max(causes, key=causes.get)
     sentence = (
         f"{first['process']}, device {first['device']}, W = {first['width_um']:g} um: sigma(Vth) {first['vth_sigma_mv']:.2f} mV "
         f"[{first['vth_sigma_low_mv']:.2f}, {first['vth_sigma_high_mv']:.2f}]; the largest cause is "
-        f"{largest.removeprefix('share_').replace('_', ' ')} with {100 * causes[largest]:.0f} % of the variance."
+        f"{largest.replace('_', ' ')} with {100 * causes[largest]:.0f} % of the variance."
     )
     sentences = [sentence]
     if len(answer_rows) > 1:

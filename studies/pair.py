@@ -16,7 +16,7 @@ from mc.plan import Plan
 from mc.runner import Progress, run
 from mc.search import crossing_of_decreasing
 from mc.sensitivity import variance_share
-from studies.answer import Answer, asked_columns, columns_of, make_plan
+from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.biasing import Biasing
 from studies.notes import model_notes, pair_notes, pair_sentences
 from studies.pair_question import Question
@@ -77,7 +77,11 @@ def answer(
         tables={"pair_lengths": lengths, "pair_shares": shares},
         headlines=best.headlines(),
         sentences=pair_sentences(question, file.name, best, len(searches)),
-        notes=(*model_notes(population), *pair_notes(question, population, best, rows)),
+        notes=(
+            *model_notes(population),
+            *pair_notes(question, population, best, rows),
+            *precision_notes(settings, best.samples),
+        ),
         samples=best.samples,
         block_size=BLOCK,
         evaluations=sum(search.evaluations for search in searches),

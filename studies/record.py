@@ -4,6 +4,7 @@ import json
 import math
 import os
 import platform
+import re
 from datetime import UTC, datetime
 from importlib.metadata import version
 from pathlib import Path
@@ -15,6 +16,7 @@ from studies.answer import Answer
 from studies.errors import InputError, one_line
 from studies.job import Job
 from studies.notes import CAUTION
+from studies.questions import SUMMARIES
 from studies.settings import Workers
 
 RECORD = "record.json"
@@ -56,7 +58,8 @@ def _old_files(folder: Path) -> list[Path]:
     """Files that an earlier run wrote, by its own record."""
     names = _old_record(folder).get("files")
     names = [name for name in names if isinstance(name, str)] if isinstance(names, list) else []
-    return [folder / name for name in names if name.isprintable() and Path(name).name == name]
+    ours = re.compile(rf"({'|'.join(SUMMARIES)})(_[^/\\]*)?\.(csv|png|svg)|answers\.json|record\.json")
+    return [folder / name for name in names if ours.fullmatch(name) and name.isprintable()]
 
 
 def plain(value):

@@ -19,7 +19,7 @@ from mc.runner import Progress, run
 from mc.sensitivity import variance_share
 from mc.tally import Moments
 from physics.edges import NoEdge
-from studies.answer import Answer, asked_columns, columns_of, make_plan
+from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.errors import InputError
 from studies.geometry import Geometry
 from studies.notes import model_notes, spread_sentences
@@ -124,7 +124,7 @@ def answer(
             for row, width in enumerate(question.width_um)
         },
         sentences=spread_sentences(table.to_dict("records")),
-        notes=tuple(model_notes(population)),
+        notes=(*model_notes(population), *precision_notes(settings, samples)),
         samples=samples,
         block_size=BLOCK,
         evaluations=len(geometries) * (samples + share_plan.samples * len(groups)),

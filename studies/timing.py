@@ -19,7 +19,7 @@ from mc.plan import Block
 from mc.runner import Progress, run
 from mc.search import first_crossing
 from mc.tally import Grid, Moments
-from studies.answer import Answer, asked_columns, columns_of, make_plan
+from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.chip import Side, Stage, fail_probability, slowest_path
 from studies.errors import InputError, one_line
 from studies.notes import model_notes, timing_sentences
@@ -145,7 +145,10 @@ def answer(
         table=table,
         headlines=headlines,
         sentences=timing_sentences(question, table.to_dict("records"), min_width),
-        notes=tuple(note for side in chips.stages[0].sides for note in model_notes(side.population)),
+        notes=(
+            *(note for side in chips.stages[0].sides for note in model_notes(side.population)),
+            *precision_notes(settings, samples),
+        ),
         samples=samples,
         block_size=BLOCK,
         evaluations=samples * sum(stage.evaluations_per_die for stage in chips.stages),

@@ -47,6 +47,8 @@ def read_toml(path: Path) -> dict:
     try:
         if path.is_dir():
             raise InputError(f"{one_line(path)}: is a folder, a TOML file is needed")
+        if path.exists() and not path.is_file():
+            raise InputError(f"{one_line(path)}: is not a file")
         if path.stat().st_size > LARGEST_FILE:
             raise InputError(f"{one_line(path)}: larger than {LARGEST_FILE // 1_000_000} MB, not a file of ours")
         text = path.read_bytes().decode("utf-8-sig").replace("\r\n", "\n")

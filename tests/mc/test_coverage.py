@@ -110,4 +110,5 @@ def test_bounded_mean_of_smooth_values(center, spread, n):
         values = stats.norm.cdf(center + spread * random.standard_normal(n))
         interval = bounded_mean(values.sum(), values @ values, n)
         held += interval.low <= truth <= interval.high
-    assert 0.94 <= held / REPEATS <= 0.99  # conservative: it allows for what was not met
+    # conservative, since it allows for one value that was not met; among 30 that one weighs much
+    assert 0.94 <= held / REPEATS <= (0.99 if n > 100 else 1)
