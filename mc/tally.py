@@ -1,15 +1,15 @@
 """Mergeable tallies of many outputs: powers about a pilot's center, a histogram, the extremes. Adding two merges them.
 
 The center and scale of each output come from a short pilot, so the power sums are those of numbers of order one and
-lose no digits (T. F. Chan, G. H. Golub, R. J. LeVeque, Am. Stat. 37, 242 (1983): shifted data). The histogram has 256
-cells a pilot sigma out to 16 sigmas; a quantile read from it is off by less than one cell, 1/256 of sigma.
+lose no digits (T. F. Chan, G. H. Golub, R. J. LeVeque, Am. Stat. 37, 242 (1983): shifted data). The histogram has 128
+cells a pilot sigma out to 16 sigmas; a quantile read from it is off by less than one cell, 1/128 of sigma.
 """
 
 from dataclasses import dataclass
 
 import numpy as np
 
-CELLS_PER_SIGMA = 256
+CELLS_PER_SIGMA = 128
 REACH = 16  # sigmas on either side
 CELLS = 2 * REACH * CELLS_PER_SIGMA
 
@@ -120,7 +120,7 @@ class Tally(Moments):
     @classmethod
     def _take(cls, tally, row, sample, scaled, total):
         super()._take(tally, row, sample, scaled, total)
-        place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.int32)
+        place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.intp)
         tally["cells"][row] += np.bincount(place, minlength=CELLS)
         tally["smallest"][row] = min(tally["smallest"][row], sample.min())
         tally["largest"][row] = max(tally["largest"][row], sample.max())

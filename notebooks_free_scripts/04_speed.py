@@ -57,11 +57,11 @@ def side_by_side(rounds, **tasks):
 def looked_up(law, normal, count):
     """The table of the counted law for one device, scalar mathematics."""
     place = (normal - law.normal_start) * law.steps_per_normal
-    left = min(max(int(place), 0), len(law.center) - 2)
-    distance = 1 / math.sqrt(count) - law.inverse_root
-    slope = law.slope_fewer if distance > 0 else law.slope_more
-    lower, upper = (float(law.center[index]) + distance * float(slope[index]) for index in (left, left + 1))
-    return lower + (place - left) * (upper - lower)
+    cell = min(max(int(place), 0), len(law.center) - 1)
+    share, distance = place - cell, 1 / math.sqrt(count) - law.inverse_root
+    sided = cell + (len(law.center) if distance < 0 else 0)
+    center = float(law.center[cell]) + share * float(law.rise[cell])
+    return center + distance * (float(law.slope[sided]) + share * float(law.slope_rise[sided]))
 
 
 def one_device_after_another(draws, population, geometry):

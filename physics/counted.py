@@ -112,18 +112,21 @@ class CountedLaw:
     """Standardised scatter of counted dopants around one nominal device, tabulated.
 
     normal_start, steps_per_normal : the grid of standard normals [1]
-    center : table at the middle of the two node counts [1]
-    slope_fewer, slope_more : its derivative with the inverse root of the mean count [1]
-    inverse_root : the middle of the inverse roots [1]
-    The table is linear in 1/sqrt(mean count) between nodes 20 % below and 25 % above the nominal count; at 25 dopants
-    and three sigmas this errs by about 1e-3 sigma, at 5 dopants by 3e-2 where the device may hold none.
+    center, rise : table at the nominal count, and its steps to the next normal [1]
+    slope, slope_rise : its derivative with the inverse root of the mean count, first for fewer dopants and then, on the
+        same grid again, for more; and its steps [1]
+    inverse_root : inverse root of the nominal count [1]
+    The table is linear in 1/sqrt(mean count) from the nominal count to nodes 20 % below and 25 % above it, so it is exact
+    at nominal and monotone; at 25 dopants and three sigmas it errs by about 1e-3 sigma, at 5 dopants by 3e-2 where the
+    device may hold none.
     """
 
     normal_start: float
     steps_per_normal: float
     center: np.ndarray
-    slope_fewer: np.ndarray
-    slope_more: np.ndarray
+    rise: np.ndarray
+    slope: np.ndarray
+    slope_rise: np.ndarray
     inverse_root: float
 
     @classmethod
@@ -139,14 +142,16 @@ class CountedLaw:
         at_nominal = compound_poisson_quantiles(_NORMALS, mean_count, density)
         at_fewer = compound_poisson_quantiles(_NORMALS, fewer, density)
         at_more = compound_poisson_quantiles(_NORMALS, more, density)
-        low, high = more**-0.5, fewer**-0.5
+        low, middle, high = more**-0.5, mean_count**-0.5, fewer**-0.5
+        slopes = (at_fewer - at_nominal) / (high - middle), (at_nominal - at_more) / (middle - low)
         return cls(
             normal_start=float(_NORMALS[0]),
             steps_per_normal=64.0,
-            center=at_nominal,
-            slope_fewer=(at_fewer - at_nominal) / (high - mean_count**-0.5),
-            slope_more=(at_nominal - at_more) / (mean_count**-0.5 - low),
-            inverse_root=mean_count**-0.5,
+            center=at_nominal[:-1],
+            rise=np.diff(at_nominal),
+            slope=np.concatenate([slope[:-1] for slope in slopes]),
+            slope_rise=np.concatenate([np.diff(slope) for slope in slopes]),
+            inverse_root=middle,
         )
 
     def standardised(self, normal, mean_count):
@@ -157,16 +162,11 @@ class CountedLaw:
         Returns (sum of weights - mean)/sigma [1], increasing in `normal`.
         """
         place = (normal - self.normal_start) * self.steps_per_normal
-        floor = np.clip(np.floor(place), 0, self.center.size - 2)
+        floor = np.clip(np.floor(place), 0, self.center.size - 1)
         share = place - floor
-        left = floor.astype(np.intp)
+        cell = floor.astype(np.intp)
         distance = 1 / np.sqrt(mean_count) - self.inverse_root
-        fewer, more = np.maximum(distance, 0), np.minimum(distance, 0)
-
-        def at(index):
-            values = (table.take(index, mode="clip") for table in (self.center, self.slope_fewer, self.slope_more))
-            center, slope_fewer, slope_more = values
-            return center + fewer * slope_fewer + more * slope_more
-
-        lower, upper = at(left), at(left + 1)
-        return lower + share * (upper - lower)
+        sided = cell + (distance < 0) * self.center.size
+        center = self.center.take(cell, mode="clip") + share * self.rise.take(cell, mode="clip")
+        slope = self.slope.take(sided, mode="clip") + share * self.slope_rise.take(sided, mode="clip")
+        return center + distance * slope
