@@ -229,7 +229,49 @@ def _draw_pair(answer: Answer):
     return figure, f"{answer.process}: {question['kind']}, L = {shown:g} um, {question['pairs']} pairs a chip"
 
 
-DRAWERS: dict[str, Any] = {"spread": _draw_spread, "timing": _draw_timing, "pair": _draw_pair}
+def failures_against_width(axes, table):
+    """Failure share on a scale of normal scores: the estimator's interval, and counted points where counting can."""
+    with_interval(axes, table, "device_failure", "", label="estimator, 95 % interval")
+    reasons = [
+        name.removeprefix("failure_") for name in table if name.startswith("failure_") and "_low" not in name[-4:]
+    ]
+    for number, reason in enumerate(name for name in reasons if not name.endswith("high") or name == "vth_high"):
+        line = ("--", ":", "-.", (0, (1, 3)))[number % 4]
+        axes.plot(table.width_um, table[f"failure_{reason}"], ls=line, color=PALETTE[number + 1], label=reason)
+    seen = table[table.counted_failure > 2e-5]
+    if len(seen):
+        axes.plot(seen.width_um, seen.counted_failure, "o", ms=9, mfc="none", color=SPREAD, label="counted")
+    width_axis(axes, table.width_um)
+    axes.set_yscale("log")
+    axes.set_ylabel("share of devices outside their limits")
+    axes.legend(frameon=False)
+    return axes
+
+
+def good_chips_against_width(axes, table):
+    """Chip yield, and good chips per wafer area on a second axis."""
+    with_interval(axes, table, "chip_yield", "", label="chips working, 95 % interval", scale=100)
+    axes.set_ylabel("chips working (%)")
+    width_axis(axes, table.width_um)
+    other = axes.twinx()
+    with_interval(
+        other, table, "good_chips", "_per_cm2", label="good chips, 95 % interval", color=REFERENCE, marker="s"
+    )
+    other.set_ylabel("good chips per cm2 (squares)")
+    axes.legend(frameon=False, loc="center right")
+    other.legend(frameon=False, loc="lower right")
+    return axes
+
+
+def _draw_loss(answer: Answer):
+    figure, axes = plt.subplots(1, 2, figsize=(12, 4.6))
+    failures_against_width(axes[0], answer.table)
+    good_chips_against_width(axes[1], answer.table)
+    question = answer.question
+    return figure, f"{answer.process}, device {question['device']}: {question['devices']} devices a chip"
+
+
+DRAWERS: dict[str, Any] = {"loss": _draw_loss, "spread": _draw_spread, "timing": _draw_timing, "pair": _draw_pair}
 
 
 def draw_all(job: Job, answers: list[Answer]) -> dict[str, bytes]:

@@ -75,7 +75,7 @@ def spread_sentences(answer_rows) -> tuple[str, ...]:
 
 def timing_sentences(question, rows, min_width) -> tuple[str, ...]:
     """The timing answer in words. rows : rows of timing.csv, narrowest first, as dictionaries."""
-    target = f"{rows[0]['process']}, {100 * question.target_yield:g} % of chips within {question.period_ps:g} ps"
+    target = f"{rows[0]['process']}, {100 * question.target_yield:.12g} % of chips within {question.period_ps:g} ps"
     last = rows[-1]
     if not np.isfinite(min_width.value):
         return (
@@ -97,11 +97,17 @@ def pair_sentences(question, process: str, best, lengths: int) -> tuple[str, ...
     """The pair answer in words. best : the search of the smallest area, or the last when none met the target"""
     tally, row = best.judged[best.shown_width()]
     target = (
-        f"{process}, {question.kind}, {question.pairs} pairs a chip, {100 * question.target_yield:g} % of chips within "
+        f"{process}, {question.kind}, {question.pairs} pairs a chip, {100 * question.target_yield:.12g} % of chips within "
         f"{question.limit * question.error_words[2]:g} {'mV' if question.limit_mv else '%'}"
     )
-    reached = tally.chip_yield(row)
-    best_reached = f"{100 * reached.value:.4g} % [{100 * reached.low:.4g}, {100 * reached.high:.4g}] of chips"
+    reached = best.yields(best.shown_width())[1]
+    digits = int(np.clip(np.ceil(-np.log10(1 - question.target_yield)), 2, 12))
+    best_reached = " ".join(
+        (
+            f"{100 * reached.value:.{digits}f} %",
+            f"[{100 * reached.low:.{digits}f}, {100 * reached.high:.{digits}f}] of chips",
+        )
+    )
     if not best.met:
         needed = tally.worst_quantile(row, question.target_yield)
         if needed.value <= question.limit:
@@ -123,12 +129,11 @@ def pair_sentences(question, process: str, best, lengths: int) -> tuple[str, ...
 def pair_notes(question, population: Population, best, rows) -> list[str]:
     """What a designer of pairs should know of this answer."""
     notes = ["Offset and error come from the two drawn devices at their operating point, both saturated."]
-    needed = int(np.ceil(np.log(0.025) / np.log(question.target_yield)))
-    if not np.isfinite(best.width.high) and best.samples < needed:
-        notes.append(
-            f"{best.samples} chips cannot bound a yield of {question.target_yield:g}: at least {needed} chips are needed "
-            f"(--samples {needed}), some {10 * needed} for a useful interval."
-        )
+    if best.tail:
+        chips = f"{best.samples} chips cannot bound a yield of {question.target_yield:g}"
+        notes.append(f"{chips}: the failure probability of one pair was found by the rare-event estimator.")
+        doubts = dict.fromkeys(note for estimate in best.tail.values() for note in estimate.notes)
+        notes += [f"The rare-event estimator doubts itself: {doubt}." for doubt in doubts]
     scatter = population.record.scatter
     if question.distance_um == 0 and (scatter.distance_pair_uv_per_um or scatter.gradient_uv_per_um):
         notes.append("distance_um is 0: the process file's distance terms have no effect.")
@@ -144,4 +149,38 @@ def pair_notes(question, population: Population, best, rows) -> list[str]:
                 f"The yield is not monotone in width: it falls beyond W = {curve.width_um[falls].iloc[0]:.4g} um. The width "
                 "given is the smallest from which on it stays above the target."
             )
+    return notes
+
+
+def loss_sentences(question, rows) -> tuple[str, ...]:
+    """The loss in words. rows : rows of loss.csv, narrowest first, as dictionaries"""
+    first, best = rows[0], max(rows, key=lambda row: row["good_chips_per_cm2"])
+    near = [row["width_um"] for row in rows if row["good_chips_high_per_cm2"] >= best["good_chips_low_per_cm2"]]
+    return (
+        f"{first['process']}, device {first['device']}, W = {first['width_um']:g} um: {first['device_failure']:.2g} of "
+        f"devices [{first['device_failure_low']:.2g}, {first['device_failure_high']:.2g}] are outside their limits; "
+        f"{100 * first['chip_yield']:.2f} % [{100 * first['chip_yield_low']:.2f}, {100 * first['chip_yield_high']:.2f}] of "
+        f"chips of {question.devices} devices work.",
+        f"Most good chips per wafer area at W = {best['width_um']:g} um [{min(near):g}, {max(near):g}] of the widths asked "
+        f"for: {best['good_chips_per_cm2']:.4g} per cm2 "
+        f"[{best['good_chips_low_per_cm2']:.4g}, {best['good_chips_high_per_cm2']:.4g}].",
+    )
+
+
+def loss_notes(question, widths) -> list[str]:
+    """What a designer of arrays should know of this answer."""
+    notes = [
+        "Dies differ: the chip yield is the mean over dies of the binomial yield at each die's own failure share, which is "
+        "found by moving one die-level cause at a time (an approximation: causes are taken not to interact)."
+    ]
+    for width in widths:
+        drawn = width.margins.geometry.drawn_width * 1e6
+        if width.unresolved:
+            notes.append(
+                f"W = {drawn:g} um: failures of a kind are too rare to be met, below 1e-15 or impossible; the chip yield "
+                "leaves them out."
+            )
+        notes += [f"W = {drawn:g} um: the estimator doubts itself: {doubt}." for doubt in width.doubts()]
+    if question.defects_per_cm2 == 0:
+        notes.append("Defects are left out; give defects_per_cm2 to compare chips of different size.")
     return notes

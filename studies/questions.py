@@ -6,6 +6,7 @@ from types import ModuleType
 SUMMARIES = {
     "spread": "Threshold voltage against width: mean, sigma, skew, tails, and which cause contributes how much.",
     "timing": "Timing yield of chips with many equal paths against width, and the period or width a target yield needs.",
+    "loss": "Yield loss of narrow devices: shares outside their limits down to 1e-10, chip yield with spares, and area.",
     "pair": "Smallest width of matched pairs that keeps their offset or current error inside a limit on enough chips.",
 }
 

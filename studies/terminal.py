@@ -150,7 +150,27 @@ def pair_tables(answer: Answer) -> list[Table]:
     ]
 
 
-TABLES = {"spread": spread_tables, "timing": timing_tables, "pair": pair_tables}
+def loss_tables(answer: Answer) -> list[Table]:
+    """Failure shares, chip yield and good chips."""
+    question, rows = answer.question, answer.table.to_dict("records")
+    lines = [
+        [
+            f"{row['width_um']:g}",
+            f"{row['device_failure']:.2e} [{row['device_failure_low']:.1e}, {row['device_failure_high']:.1e}]"
+            + ("?" if row["doubtful"] else ""),
+            _bounds(row, "chip_yield", "", 2, 100),
+            _plus_minus(row, "good_chips", "_per_cm2", 2),
+        ]
+        for row in rows
+    ]
+    title = (
+        f"Loss: {one_line(answer.process)}, device {one_line(question['device'])}, {question['devices']} devices a chip, "
+        f"{question['spares']} spares; ? is doubtful"
+    )
+    return [_table(title, ["W um", "outside their limits", "chips working %", "good chips/cm2"], lines)]
+
+
+TABLES = {"loss": loss_tables, "spread": spread_tables, "timing": timing_tables, "pair": pair_tables}
 
 
 def show(answers: list[Answer], out: Console) -> None:

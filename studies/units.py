@@ -14,12 +14,16 @@ SUFFIXES = {  # longest endings first, so that "_mv_um" is not read as "_um"
     "per_v": 1.0,  # [1/V]
     "percent": 1e-2,  # [1]
     "nm2": 1e-18,  # [m^2]
+    "um2": 1e-12,  # [m^2]
+    "mm2": 1e-6,  # [m^2]
+    "mm": 1e-3,  # [m]
     "nm": 1e-9,  # [m]
     "um": 1e-6,  # [m]
     "mv": 1e-3,  # [V]
     "ev": 1.0,  # [V]; a work function divided by the elementary charge
     "v": 1.0,  # [V]
     "ua": 1e-6,  # [A]
+    "na": 1e-9,  # [A]
     "ps": 1e-12,  # [s]
     "ff": 1e-15,  # [F]
 }

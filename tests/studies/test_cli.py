@@ -15,6 +15,7 @@ HEAVY = ("numpy", "scipy", "pandas", "matplotlib", "seaborn", "pydantic", "jobli
 COMMANDS = ("new", "run", *SUMMARIES)
 TIMING = {"width_um": [0.12], "length_um": 0.13, "period_ps": 4500.0, "paths": 100, "stages": 11, "supply_v": 0.6}
 PAIR = {"device": "n", "pairs": 8, "yield": 0.97, "length_um": [0.2, 0.5]}
+LOSS = {"device": "n", "width_um": [0.12, 0.2], "length_um": 0.13, "devices": 1000}
 FLAGS = {  # a kind's questions, as a person types them; together every field with a value that is not its default
     "spread": [
         {"width_um": [0.12, 0.4], "length_um": 0.13, "device": "n"},
@@ -40,6 +41,14 @@ FLAGS = {  # a kind's questions, as a person types them; together every field wi
         PAIR
         | {"kind": "differential pair", "limit_mv": 4.0, "gm_over_i_per_v": 20.0, "grid_nm": 10.0, "distance_um": 9.0}
         | {"layout": "common centroid", "width_min_um": 0.3, "width_max_um": 50.0},
+    ],
+    "loss": [
+        LOSS | {"vth_window_mv": 70.0, "fixed_area_mm2": 2.0, "spares": 4, "blocks": 2, "temperature_c": 85.0},
+        LOSS | {"vth_low_v": 0.1, "vth_high_v": 0.3, "cell_area_um2": 0.4, "cell_length_um": 1.5, "body_bias_v": 0.2},
+        LOSS
+        | {"drive_floor_ua": 5.0, "leakage_ceiling_na": 100.0, "supply_v": 1.2, "fixed_area_mm2": 2.0, "drain_v": 0.1}
+        | {"wafer_diameter_mm": 300.0, "edge_exclusion_mm": 3.0, "defects_per_cm2": 0.5, "clustering": 3.0},
+        LOSS | {"drive_floor_percent": 70.0, "leakage_ceiling_times": 9.0, "supply_v": 1.2, "fixed_area_mm2": 2.0},
     ],
 }
 

@@ -13,6 +13,7 @@ from studies.units import SUFFIXES, micrometres, si, split_unit
 RECORDS = (Process, Device, Edge, ShortChannel, Scatter, Relative, Length, Voltage, Correlation, Settings)
 # keys of floats that are pure numbers
 NUMBERS = {"shape", "eta", "cut_sigmas", "value", "precision", "fan_out", "width_ratio", "target_yield", "table_factor"}
+NUMBERS |= {"leakage_ceiling_times", "clustering"}
 
 
 @pytest.mark.parametrize(
@@ -23,6 +24,9 @@ NUMBERS = {"shape", "eta", "cut_sigmas", "value", "precision", "fan_out", "width
         ("doping_per_cm3", 4e17, 4e23),
         ("oxide_charge_per_cm2", 3e10, 3e14 * 1.602176634e-19),
         ("grain_area_nm2", 25.0, 25e-18),
+        ("cell_area_um2", 0.4, 4e-13),
+        ("fixed_area_mm2", 2.0, 2e-6),
+        ("edge_exclusion_mm", 3.0, 3e-3),
         ("flat_band_mv", 5.0, 5e-3),
         ("gate_work_function_ev", 4.6, 4.6),
         ("body_bias_v", 1.5, 1.5),
@@ -36,6 +40,7 @@ NUMBERS = {"shape", "eta", "cut_sigmas", "value", "precision", "fan_out", "width
         ("die_percent", 0.5, 0.005),
         ("period_ps", 5000.0, 5e-9),
         ("drain_current_ua", 2.0, 2e-6),
+        ("leakage_ceiling_na", 5.0, 5e-9),
         ("gradient_uv_per_um", 3.0, 3.0),  # 1 uV/um is 1 V/m
     ],
 )
