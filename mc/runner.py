@@ -7,6 +7,7 @@ from joblib import Parallel, delayed
 
 from mc.plan import Block, Plan
 
+LARGEST_BATCH = 8  # blocks a message to a worker
 Progress = Callable[[int, int], None]
 
 
@@ -23,9 +24,14 @@ def run_blocks(task: Callable[[Block], Any], blocks: Iterable[Block], *, jobs=1,
     """
     if jobs == 1:
         return (task(block) for block in blocks)
+    blocks = list(blocks)
     if backend == "multiprocessing":  # joblib hands its results on only when all are there: a few blocks at a time
-        return _in_lots(task, list(blocks), Parallel(n_jobs=jobs, backend=backend), 4 * jobs)
-    parallel = Parallel(n_jobs=jobs, backend=backend, return_as="generator", pre_dispatch="3*n_jobs")
+        return _in_lots(task, blocks, Parallel(n_jobs=jobs, backend=backend), 4 * jobs)
+    # several blocks a message, so that scheduling costs little, but enough messages to share the work evenly
+    batch = max(1, min(LARGEST_BATCH, len(blocks) // (6 * jobs)))
+    parallel = Parallel(
+        n_jobs=jobs, backend=backend, return_as="generator", batch_size=batch, pre_dispatch=3 * batch * jobs
+    )
     return parallel(delayed(task)(block) for block in blocks)
 
 

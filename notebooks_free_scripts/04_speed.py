@@ -143,8 +143,8 @@ def against_other_ways():
 
 def two_workers():
     ours = experiment(np.geomspace(0.12, 2, 4))
-    plan = Plan(samples=spread.BLOCK * (8 if SHORT else 120), block_size=spread.BLOCK)
-    times = side_by_side(1 if SHORT else 5, one=lambda: run(ours, plan), two=lambda: run(ours, plan, jobs=2))
+    plan = Plan(samples=spread.BLOCK * (8 if SHORT else 480), block_size=spread.BLOCK)
+    times = side_by_side(1 if SHORT else 3, one=lambda: run(ours, plan), two=lambda: run(ours, plan, jobs=2))
     print(f"two workers against one: {times['one'] / times['two']:.2f} times faster")
 
 

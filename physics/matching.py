@@ -73,6 +73,20 @@ def saturated_efficiency(channel: Channel, gate_voltage):
     return relative * slope / (2 * channel.slope_factor * channel.thermal_voltage)
 
 
+def saturation_voltage(channel: Channel, gate_voltage):
+    """Drain voltage from which on the current keeps within 2 % of its saturated value.
+
+    channel : see `physics.current.Channel`
+    gate_voltage : against the source, a magnitude [V]
+    Returns drain voltage [V], about 4 kT/q in weak inversion.
+    Source: the drain-end charge falls to its saturation value, or to exp(-4), on the scale of the source-end charge
+    (own derivation from `physics.current.drain_current`).
+    """
+    charge = soft_plus((gate_voltage - channel.threshold) / (2 * channel.slope_factor * channel.thermal_voltage))
+    _, saturation = _corrections(channel)
+    return 2 * channel.thermal_voltage * charge / (1 + saturation * charge) + 4 * channel.thermal_voltage
+
+
 def pair_offset(threshold_difference, relative_factor_difference, efficiency):
     """Input-referred offset of a differential pair, small-signal shorthand.
 

@@ -5,7 +5,7 @@ from functools import cache
 import numpy as np
 
 from physics.gate_delay import gate_capacitance
-from physics.matching import gate_voltage_at, largest_current, saturated_efficiency
+from physics.matching import gate_voltage_at, largest_current, saturated_efficiency, saturation_voltage
 from physics.threshold import oxide_capacitance
 from studies.errors import InputError
 from studies.pair_question import BIASES, Question
@@ -58,14 +58,20 @@ class Biasing:
         return InputError(f"{self.population.where}: {bias} = {getattr(self.question, bias):g}: {why}")
 
     def operating_point(self, width_um: float) -> dict[str, float]:
-        """Nominal drain current and gm/I, as columns."""
+        """Nominal drain current, gm/I, gate voltage and the drain voltage that saturates it, as columns."""
         current = self.candidate(width_um).current
         _, channel = self._nominal(width_um)
         gate = gate_voltage_at(channel, current / self.question.fingers)
         return {
             "drain_current_ua": current / SUFFIXES["ua"],
             "gm_over_i_per_v": float(saturated_efficiency(channel, gate)),
+            "gate_v": float(gate),
+            "saturation_v": float(saturation_voltage(channel, gate)),
         }
+
+    def electrical_width_um(self, width_um: float) -> float:
+        """Electrical width of one device, its fingers together."""
+        return self.question.fingers * self._nominal(width_um)[0].width / SUFFIXES["um"]
 
     def gate_capacitance_ff(self, width_um: float) -> float:
         """Gate capacitance of one device."""

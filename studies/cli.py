@@ -47,6 +47,7 @@ def _overview() -> Parser:
     parser.add_argument("--version", action="version", version=f"widthwise {__version__}")
     commands = parser.add_argument_group("commands")
     commands.add_argument("new", nargs="?", help="write the demo: two process options and a job, into a folder")
+    commands.add_argument("keys", nargs="?", help="tell every key of a process file, its range and its meaning")
     commands.add_argument("run", nargs="?", help="answer every question of a job file")
     for kind, summary in SUMMARIES.items():
         commands.add_argument(kind, nargs="?", help=summary)
@@ -96,6 +97,14 @@ def _new(arguments) -> int:
     for path in write_demo(folder):
         print(path)
     print(f"Next: widthwise run {folder / 'job.toml'} --out {folder / 'results'}", file=sys.stderr)
+    return DONE
+
+
+def _keys(arguments) -> int:
+    Parser(prog="widthwise keys", description="Tell every key of a process file.").parse_args(arguments)
+    from studies.keys import key_lines
+
+    print("\n".join(key_lines()))
     return DONE
 
 
@@ -191,11 +200,15 @@ def _command(arguments) -> int:
     command, *rest = arguments
     if command == "new":
         return _new(rest)
+    if command == "keys":
+        return _keys(rest)
     if command == "run":
         return _run(rest)
     if command in SUMMARIES:
         return _ask(command, rest)
-    raise InputError(f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'run', *SUMMARIES])}")
+    raise InputError(
+        f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'keys', 'run', *SUMMARIES])}"
+    )
 
 
 if __name__ == "__main__":

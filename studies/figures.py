@@ -18,9 +18,16 @@ from matplotlib.ticker import FuncFormatter, NullFormatter
 from studies.answer import Answer
 from studies.errors import inert
 from studies.job import Job
+from studies.variation import CAUSES
 
 PALETTE = sns.color_palette("colorblind", 10)
 SPREAD, NUMBER, REFERENCE = PALETTE[0], "black", PALETTE[1]
+SHOWN = ("dopants", "remainder", "doping", "oxide_thickness", "length", "width", "oxide_roughness", "gate_edges")
+SHOWN += (
+    "active_edges",
+    "grains",
+    *(cause for cause in CAUSES if cause in ("flat_band", "mobility", "current_factor")),
+)
 HATCHES = ["", "//", "..", "\\\\", "xx", "--", "++", "oo", "**", "||"]
 
 
@@ -98,12 +105,13 @@ def sigma_against_width(axes, table):
             color=REFERENCE,
             ls="--",
             zorder=5,
-            label="1/sqrt(W L) from the widest",
+            label="1/sqrt(electrical W L) from the widest",
         )
     width_axis(axes, table.width_um)
     plain_log_axis(axes)
     axes.set_ylabel("sigma of the threshold (mV)")
-    axes.legend(frameon=False)
+    axes.set_ylim(bottom=0.45 * axes.get_ylim()[0])  # room for the legend below falling curves
+    axes.legend(frameon=False, loc="lower left", fontsize="small")
     return axes
 
 
@@ -111,19 +119,19 @@ def shares_against_width(axes, shares, causes):
     """Stacked shares of the variance; causes below 2 % everywhere are gathered."""
     wide = shares[shares.part.isin(causes)].pivot(index="width_um", columns="part", values="share")
     small = [part for part in wide if wide[part].max() < 0.02]
-    order = wide.drop(columns=small).mean().sort_values(ascending=False).index
+    order = [cause for cause in SHOWN if cause in wide and cause not in small]
     stack = wide[list(order)].copy()
     if small:
         stack["others"] = wide[small].sum(axis=1)
     places, bottom = np.arange(len(stack)), np.zeros(len(stack))
-    for number, part in enumerate(stack):
+    for part in stack:
         axes.bar(
             places,
             100 * stack[part],
             bottom=bottom,
             width=0.8,
-            color=PALETTE[number % 10],
-            hatch=HATCHES[number % 10],
+            color=_cause_color(part),
+            hatch=HATCHES[SHOWN.index(part) % 10] if part in SHOWN else "",
             edgecolor="white",
             lw=0.4,
             label=part.replace("_", " "),
@@ -136,6 +144,11 @@ def shares_against_width(axes, shares, causes):
     handles, labels = axes.get_legend_handles_labels()
     axes.legend(handles[::-1], labels[::-1], frameon=False, bbox_to_anchor=(1.0, 1.0), loc="upper left")
     return axes
+
+
+def _cause_color(part: str):
+    """The same colour for a cause in every figure; grey for what is gathered."""
+    return PALETTE[SHOWN.index(part) % 10] if part in SHOWN else "0.7"
 
 
 def yield_against_width(axes, table, target: float):
@@ -193,8 +206,8 @@ def error_against_width(axes, curve, error: str, unit: str):
     """Sigma of the pairs' error, and the straight 1/sqrt(W L) line laid from the widest device."""
     with_interval(axes, curve, f"{error}_sigma", f"_{unit}", label="drawn pairs, 95 % interval")
     widest = curve.iloc[-1]
-    line = widest[f"{error}_sigma_{unit}"] * np.sqrt(widest.width_um / curve.width_um)
-    axes.plot(curve.width_um, line, color=REFERENCE, ls="--", zorder=5, label="1/sqrt(W L) from the widest")
+    line = widest[f"{error}_sigma_{unit}"] * np.sqrt(widest.electrical_width_um / curve.electrical_width_um)
+    axes.plot(curve.width_um, line, color=REFERENCE, ls="--", zorder=5, label="1/sqrt(electrical W L) from the widest")
     width_axis(axes, curve.width_um)
     plain_log_axis(axes)
     axes.set_ylabel(f"{error} sigma ({'mV' if unit == 'mv' else '%'})")

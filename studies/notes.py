@@ -51,6 +51,15 @@ def model_notes(population: Population) -> list[str]:
     return notes
 
 
+def bound_notes(table, what: str, more: str) -> list[str]:
+    """A note when some number of a table has no bound. what : what was sampled; more : what would help"""
+    unbounded = [name for name in table if name.endswith(("_v", "_ps")) and np.isinf(table[name].astype(float)).any()]
+    if not unbounded:
+        return []
+    shown = ", ".join(unbounded[:3])
+    return [f"So few {what} set no bound for {shown} (inf): a tail beyond what was sampled is not known; {more}."]
+
+
 def spread_sentences(answer_rows) -> tuple[str, ...]:
     """The spread in words. answer_rows : rows of spread.csv, narrowest first, as dictionaries."""
     first, last = answer_rows[0], answer_rows[-1]
@@ -93,8 +102,8 @@ def timing_sentences(question, rows, min_width) -> tuple[str, ...]:
     )
 
 
-def pair_sentences(question, process: str, best, lengths: int) -> tuple[str, ...]:
-    """The pair answer in words. best : the search of the smallest area, or the last when none met the target"""
+def pair_sentences(question, process: str, best, searches) -> tuple[str, ...]:
+    """The pair answer in words. best : the search of the smallest area; searches : those that met the target"""
     tally, row = best.judged[best.shown_width()]
     target = (
         f"{process}, {question.kind}, {question.pairs} pairs a chip, {100 * question.target_yield:.12g} % of chips within "
@@ -123,7 +132,19 @@ def pair_sentences(question, process: str, best, lengths: int) -> tuple[str, ...
         f"{best.biasing.length_um:g} um, {question.fingers} finger{'s' if question.fingers > 1 else ''}, gate area of a "
         f"pair {best.area(width.value):.4g} um2; there {best_reached} stay inside."
     )
-    return (sentence + (" It has the smallest area of the lengths asked for." if lengths > 1 else ""),)
+    return (sentence + smallest_area(best, searches),)
+
+
+def smallest_area(best, searches) -> str:
+    """What can be said of the lengths' areas; searches : those that met the target"""
+    if len(searches) < 2:
+        return ""
+    high = best.area(best.width.high)
+    alike = [search.biasing.length_um for search in searches if search.area(search.width.low) < high]
+    if len(alike) == 1:
+        return " It has the smallest area of the lengths asked for."
+    others = ", ".join(f"{length:g}" for length in alike if length != best.biasing.length_um)
+    return f" Its area is the smallest found, but that of L = {others} um is the same within the intervals."
 
 
 def pair_notes(question, population: Population, best, rows) -> list[str]:
@@ -135,12 +156,24 @@ def pair_notes(question, population: Population, best, rows) -> list[str]:
         doubts = dict.fromkeys(note for estimate in best.tail.values() for note in estimate.notes)
         notes += [f"The rare-event estimator doubts itself: {doubt}." for doubt in doubts]
     scatter = population.record.scatter
+    if question.distance_um > 0 and not (scatter.distance_pair_uv_per_um or scatter.gradient_uv_per_um):
+        notes.append(
+            "distance_um has no effect: the process file gives neither scatter.distance_pair_uv_per_um nor "
+            "scatter.gradient_uv_per_um."
+        )
     if question.distance_um == 0 and (scatter.distance_pair_uv_per_um or scatter.gradient_uv_per_um):
         notes.append("distance_um is 0: the process file's distance terms have no effect.")
     if scatter.gate_edge_nm == 0:
         notes.append(
             "No gate-edge roughness is given and none of the causes depends on length but by area: real short channels "
             "scatter more than 1/sqrt(W L). Measure a pair at the shortest length, or give gate_edge_nm."
+        )
+    shallow = rows[rows.saturation_v > question.drain_v]
+    if len(shallow):
+        widths = ", ".join(f"{width:.3g}" for width in shallow.width_um[:3])
+        notes.append(
+            f"Not saturated: at W = {widths} um the nominal device needs up to {shallow.saturation_v.max():.2f} V of drain "
+            f"voltage and drain_v is {question.drain_v:g} V; offset and error there are those of a saturated device."
         )
     for _, curve in rows.groupby("length_um"):
         falls = curve.chip_yield.shift(-1) < curve.chip_yield_low

@@ -26,6 +26,8 @@ from studies.units import SUFFIXES, si
 __all__ = ["Question", "answer", "check"]
 
 DRAWS_AT_ONCE = 200_000  # a slice's chips times its random numbers
+MOST_PAIRS = 2_000_000  # pairs (times fingers) drawn at a width by default; beyond what they can count, rare events
+FEWEST_CHIPS = 1000
 FAILURES_EXPECTED = 100  # chips outside at the target yield, unless samples are given
 
 
@@ -68,7 +70,7 @@ def answer(
         table=rows,
         tables={"pair_lengths": lengths, "pair_shares": shares},
         headlines=best.headlines(),
-        sentences=pair_sentences(question, file.name, best, len(searches)),
+        sentences=pair_sentences(question, file.name, best, [search for search in searches if search.met]),
         notes=(
             *model_notes(population),
             *pair_notes(question, population, best, rows),
@@ -102,7 +104,9 @@ def _arrangement(question: Question, population: Population) -> Arrangement:
 
 
 def _plan(question: Question, settings: Settings) -> Plan:
-    wanted = round(float(np.clip(FAILURES_EXPECTED / (1 - question.target_yield), 20_000, 1_000_000)))
+    wanted = float(np.clip(FAILURES_EXPECTED / (1 - question.target_yield), 20_000, 1_000_000))
+    affordable = max(MOST_PAIRS / (question.pairs * question.fingers), FEWEST_CHIPS)
+    wanted = round(min(wanted, affordable))
     return make_plan(settings, default_samples=wanted, block_size=BLOCK)
 
 

@@ -174,6 +174,7 @@ class Search:
             | columns_of("chip_yield", chip_yield)
             | {f"{error}_sigma_low_{unit}": sigma.low, f"{error}_sigma_high_{unit}": sigma.high}
             | {f"{error}_p99_9_low_{unit}": size.low, f"{error}_p99_9_high_{unit}": size.high}
+            | {"electrical_width_um": self.biasing.electrical_width_um(width_um)}
             | {"is_minimum": bool(self.met and width_um == self.width.value), "samples": tally.worst.count}
             | self.biasing.operating_point(width_um)
         )

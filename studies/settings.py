@@ -13,7 +13,7 @@ class Settings(Record):
     seed: Annotated[int, Field(ge=0, lt=2**63)] = 1
     """seed of all random draws; 0 is a seed too"""
     samples: Annotated[int, Field(ge=1000, le=10**11)] | None = None
-    """samples: devices for spread, dies for timing; each question has its own default"""
+    """samples: devices for spread, dies for timing and loss, chips for pair; each question has its own default"""
     precision: Annotated[float, Field(gt=1e-5, lt=1)] | None = None
     """instead of samples: half-width of the 95 % interval to be reached, relative for a sigma, absolute for a yield"""
 

@@ -22,7 +22,7 @@ from physics.edges import NoEdge
 from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.errors import InputError
 from studies.geometry import Geometry
-from studies.notes import model_notes, spread_sentences
+from studies.notes import bound_notes, model_notes, spread_sentences
 from studies.population import Population
 from studies.process_file import LEVELS, ProcessFile
 from studies.question import WidthQuestion
@@ -124,7 +124,11 @@ def answer(
             for row, width in enumerate(question.width_um)
         },
         sentences=spread_sentences(table.to_dict("records")),
-        notes=(*model_notes(population), *precision_notes(settings, samples)),
+        notes=(
+            *model_notes(population),
+            *bound_notes(table, "devices", "3700 or more are needed for the 0.1 % and 99.9 % quantiles"),
+            *precision_notes(settings, samples),
+        ),
         samples=samples,
         block_size=BLOCK,
         evaluations=len(geometries) * (samples + share_plan.samples * len(groups)),

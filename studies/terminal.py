@@ -83,8 +83,14 @@ def spread_tables(answer: Answer) -> list[Table]:
             [f"{row['width_um']:g}", *("-" if sigma is None else f"{sigma:.2f}" for sigma in local)]
             + [f"{100 * mine.share[cause]:.1f} ±{_half_width(mine, cause):.1f}" for cause in largest]
         )
+    errors = [
+        max(row["vth_device_sigma_high_mv"] / row["vth_device_sigma_mv"] - 1, 0)
+        for row in rows
+        if row.get("vth_device_sigma_mv")
+    ]
+    error = f" (±{100 * max(errors):.1f} %)" if errors else ""
     second = _table(
-        "Neighbours' sigma in mV (±1 %) and shares of the whole variance in %",
+        f"Neighbours' sigma in mV{error} and the largest causes' shares of the variance in %",
         ["W um", "sigma", "1/√WL", *[cause.replace("_", " ") for cause in largest]],
         reasons,
     )

@@ -22,7 +22,7 @@ from mc.tally import Grid, Moments
 from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.chip import Side, Stage, fail_probability, slowest_path
 from studies.errors import InputError, one_line
-from studies.notes import model_notes, timing_sentences
+from studies.notes import bound_notes, model_notes, timing_sentences
 from studies.population import Population
 from studies.process_file import LEVELS, ProcessFile
 from studies.question import WidthQuestion
@@ -147,6 +147,7 @@ def answer(
         sentences=timing_sentences(question, table.to_dict("records"), min_width),
         notes=(
             *(note for side in chips.stages[0].sides for note in model_notes(side.population)),
+            *bound_notes(table, "dies", "ask for more samples"),
             *precision_notes(settings, samples),
         ),
         samples=samples,
