@@ -147,9 +147,17 @@ def smallest_area(best, searches) -> str:
     return f" Its area is the smallest found, but that of L = {others} um is the same within the intervals."
 
 
-def pair_notes(question, population: Population, best, rows) -> list[str]:
-    """What a designer of pairs should know of this answer."""
+def pair_notes(question, population: Population, best, whole, rows) -> list[str]:
+    """What a designer of pairs should know of this answer. whole : the answer's width as one finger, or None"""
     notes = ["Offset and error come from the two drawn devices at their operating point, both saturated."]
+    if whole is not None:
+        width, shown = best.shown_width(), "mV" if question.limit_mv else "%"
+        split, one = best.error_sigma(width), whole.error_sigma(width)
+        notes.append(
+            f"Splitting W = {width:.4g} um into {question.fingers} fingers: sigma {split.value:.4g} {shown} [{split.low:.4g}, "
+            f"{split.high:.4g}]; as one finger {one.value:.4g} {shown} [{one.low:.4g}, {one.high:.4g}]. The shift of the "
+            "added edges cancels in the pair; their scatter does not."
+        )
     if best.tail:
         chips = f"{best.samples} chips cannot bound a yield of {question.target_yield:g}"
         notes.append(f"{chips}: the failure probability of one pair was found by the rare-event estimator.")

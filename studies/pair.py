@@ -3,6 +3,7 @@
 The same draws serve every width, so the yield is a smooth function of the width and the search needs few evaluations.
 """
 
+from dataclasses import replace
 from functools import partial
 from time import perf_counter
 
@@ -63,6 +64,7 @@ def answer(
     lengths = pd.DataFrame([search.summary(file) for search in searches])
     best = min(searches, key=lambda search: (not search.met, search.area(search.width.value)))
     shares = best.shares(file)
+    whole = _as_one_finger(best) if question.fingers > 1 else None
     return Answer(
         kind="pair",
         process=file.name,
@@ -73,7 +75,7 @@ def answer(
         sentences=pair_sentences(question, file.name, best, [search for search in searches if search.met]),
         notes=(
             *model_notes(population),
-            *pair_notes(question, population, best, rows),
+            *pair_notes(question, population, best, whole, rows),
             *precision_notes(settings, best.samples),
         ),
         samples=best.samples,
@@ -82,6 +84,25 @@ def answer(
         seconds=perf_counter() - started,
         met=best.met,
     )
+
+
+def _as_one_finger(best: Search) -> Search:
+    """The answer's width as one finger, on draws of its own, for what splitting costs or gains."""
+    question = best.question.model_copy(update={"fingers": 1})
+    arrangement = replace(best.arrangement, fingers=1)
+    whole = replace(
+        best,
+        question=question,
+        arrangement=arrangement,
+        biasing=Biasing(question, arrangement, best.biasing.length_um),
+        inputs=replace(best.inputs, names=(*arrangement.die_names(), *arrangement.pair_names())),
+        judged={},
+        tail={},
+        evaluations=0,
+    )
+    whole.judge([best.shown_width()])
+    best.evaluations += whole.evaluations
+    return whole
 
 
 def _population(question: Question, file: ProcessFile) -> Population:

@@ -126,6 +126,11 @@ class Search:
         wanted = self.question.limit / -ndtri(allowed / 2)
         return float(np.exp(np.interp(-np.log(wanted), -np.log(sigmas), np.log(overview))))
 
+    def error_sigma(self, width_um: float) -> Estimate:
+        """Sigma of the error at a width, in the unit of the tables."""
+        tally, row = self.judged[width_um]
+        return Summary(tally.every, 2 * row).sigma().scaled(self.question.error_words[2])
+
     def yields(self, width_um: float) -> tuple[Estimate, Estimate]:
         """Pair yield and chip yield at a width: by rare events where they were asked, else by counting."""
         if width_um in self.tail:

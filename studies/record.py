@@ -12,12 +12,13 @@ from pathlib import Path
 import pandas as pd
 
 from studies import __version__
-from studies.answer import Answer
+from studies.answer import Answer, columns_of
 from studies.errors import InputError, one_line
 from studies.job import Job
 from studies.notes import CAUTION
 from studies.questions import SUMMARIES
 from studies.settings import Workers
+from studies.units import split_unit
 
 RECORD = "record.json"
 LIBRARIES = ("numpy", "scipy", "pandas", "joblib", "pydantic")
@@ -86,6 +87,7 @@ def answers_json(job: Job, answers: list[Answer]) -> dict:
                     "process": answer.process,
                     "question": dict(answer.question),
                     "met": answer.met,
+                    "numbers": _numbers(answer),
                     "headlines": {name: vars(estimate) for name, estimate in answer.headlines.items()},
                     "sentences": answer.sentences,
                     "notes": answer.notes,
@@ -94,6 +96,16 @@ def answers_json(job: Job, answers: list[Answer]) -> dict:
             ],
         }
     )
+
+
+def _numbers(answer: Answer) -> dict[str, float]:
+    """The headlines of the whole answer as plain numbers: name_unit, name_low_unit, name_high_unit."""
+    numbers = {}
+    for name, estimate in answer.headlines.items():
+        if " at " not in name:  # those stand in the tables, a row a width
+            quantity, unit = split_unit(name)
+            numbers |= columns_of(quantity, estimate, unit or "")
+    return numbers
 
 
 def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[str]) -> dict:

@@ -1,5 +1,6 @@
 """The pair question: closed forms, published pairs, common draws, and what a person asks of it."""
 
+import json
 from importlib.resources import files
 
 import numpy as np
@@ -254,3 +255,27 @@ def test_rare_events_and_counting_agree_where_both_can(tmp_path):
     counted = answer_of(question, file, samples=100_000).headlines["min_width_um"]
     assert "rare events" in rare.method and "rare events" not in counted.method
     assert max(rare.low, counted.low) <= min(rare.high, counted.high) * 1.01
+
+
+def test_what_splitting_costs_is_told():
+    answer = answer_of(asked(fingers=4, width_min_um=2.0), demo())
+    (note,) = [note for note in answer.notes if note.startswith("Splitting")]
+    assert "into 4 fingers" in note and "as one finger" in note
+    # at a width bias of -20 nm a finger each, four fingers have less channel than one: more scatter
+    split, one = (float(part.split()[0]) for part in (note.split("sigma ")[1], note.split("one finger ")[1]))
+    assert split > one
+
+
+def test_the_minimum_is_in_the_answers_by_its_names(tmp_path, capsys):
+    from studies.cli import main
+
+    path = tmp_path / "option.toml"
+    path.write_text((files("studies.examples") / "option_a.toml").read_text())
+    words = "--device n --limit-mv 3 --pairs 2 --yield 0.99 --length-um 1 --gm-over-i-per-v 15 --samples 2000 --jobs 1"
+    code = main(["pair", str(path), "--kind", "differential pair", *words.split(), "--out", str(tmp_path / "out")])
+    capsys.readouterr()
+    (answer,) = json.loads((tmp_path / "out" / "answers.json").read_text())["answers"]
+    numbers = answer["numbers"]
+    assert code == 0
+    assert numbers["min_width_low_um"] <= numbers["min_width_um"] <= numbers["min_width_high_um"]
+    assert numbers["area_um2"] == pytest.approx(2 * numbers["min_width_um"])
