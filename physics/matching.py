@@ -36,7 +36,7 @@ def largest_current(channel: Channel):
     Source: limit of `saturated_current` for a large gate voltage.
     """
     degradation, saturation = _corrections(channel)
-    with np.errstate(divide="ignore"):
+    with np.errstate(divide="ignore", over="ignore"):
         return channel.specific_current / (np.asarray(degradation, float) * saturation)
 
 
