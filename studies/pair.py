@@ -17,7 +17,7 @@ from studies.answer import Answer, make_plan, precision_notes
 from studies.biasing import Biasing
 from studies.notes import model_notes, pair_notes, pair_sentences
 from studies.pair_question import Question
-from studies.pair_search import BLOCK, Search
+from studies.pair_search import Search
 from studies.pairing import Arrangement
 from studies.population import Population
 from studies.process_file import ProcessFile
@@ -27,6 +27,9 @@ from studies.units import SUFFIXES, si
 __all__ = ["Question", "answer", "check"]
 
 DRAWS_AT_ONCE = 200_000  # a slice's chips times its random numbers
+BLOCK = 8192
+FEWEST_AT_ONCE = 256  # chips evaluated at once, however many pairs they have
+DEVICES_A_BLOCK = 65_536  # pairs times fingers of a block's chips, so that few chips of many pairs still share out
 MOST_PAIRS = 2_000_000  # pairs (times fingers) drawn at a width by default; beyond what they can count, rare events
 FEWEST_CHIPS = 1000
 FAILURES_EXPECTED = 100  # chips outside at the target yield, unless samples are given
@@ -79,7 +82,7 @@ def answer(
             *precision_notes(settings, best.samples),
         ),
         samples=best.samples,
-        block_size=BLOCK,
+        block_size=best.plan.block_size,
         evaluations=sum(search.evaluations for search in searches),
         seconds=perf_counter() - started,
         met=best.met,
@@ -128,7 +131,8 @@ def _plan(question: Question, settings: Settings) -> Plan:
     wanted = float(np.clip(FAILURES_EXPECTED / (1 - question.target_yield), 20_000, 1_000_000))
     affordable = max(MOST_PAIRS / (question.pairs * question.fingers), FEWEST_CHIPS)
     wanted = round(min(wanted, affordable))
-    return make_plan(settings, default_samples=wanted, block_size=BLOCK)
+    block = int(np.clip(DEVICES_A_BLOCK // (question.pairs * question.fingers), FEWEST_AT_ONCE, BLOCK))
+    return make_plan(settings, default_samples=wanted, block_size=block)
 
 
 def _inputs(arrangement: Arrangement, settings: Settings) -> Inputs:
@@ -137,5 +141,5 @@ def _inputs(arrangement: Arrangement, settings: Settings) -> Inputs:
         seed=settings.seed,
         names=names,
         copula=arrangement.population.copula,
-        slice_size=max(64, min(BLOCK, DRAWS_AT_ONCE // len(names))),
+        slice_size=max(FEWEST_AT_ONCE, min(BLOCK, DRAWS_AT_ONCE // len(names))),
     )

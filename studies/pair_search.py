@@ -21,7 +21,6 @@ from studies.pairing import DISTANCE, GRADIENT, Arrangement, PairChips, PairTall
 from studies.process_file import ProcessFile
 from studies.variation import CAUSES
 
-BLOCK = 8192
 CURVE = 6  # widths of the overview, the search's first bracket
 SHARE_CHIPS = 20_000
 TAIL_SPAN = 1.25  # on either side of the first guess, where the tail is estimated
@@ -223,7 +222,7 @@ class Search:
     def shares(self, file: ProcessFile) -> pd.DataFrame:
         """Break-down of the error's variance at the answer: runs in which only one cause varies, on the same draws."""
         candidate = (self.biasing.candidate(self.shown_width()),)
-        plan = Plan(samples=min(self.samples, SHARE_CHIPS), block_size=BLOCK)
+        plan = Plan(samples=min(self.samples, SHARE_CHIPS), block_size=self.plan.block_size)
         error, unit, scale = self.question.error_words
 
         def summary(names):
