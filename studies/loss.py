@@ -13,8 +13,9 @@ from time import perf_counter
 import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed
-from scipy.special import betaincc, ndtr, ndtri
+from scipy.special import ndtr, ndtri
 
+from mc.array_yield import array_failure, defect_yield
 from mc.experiment import Inputs
 from mc.intervals import Estimate, bounded_mean, fraction_exact
 from mc.plan import Block
@@ -161,20 +162,12 @@ def _count(margins: Margins, names, seed: int) -> int:
     return outside
 
 
-def chip_pass(share, question: Question):
-    """Probability that every block of a chip has no more failures than spares, devices failing with `share`."""
-    each = question.devices // question.blocks
-    if question.spares >= each:
-        return np.ones_like(share)
-    inside = betaincc(question.spares + 1, each - question.spares, share)
-    return np.exp(question.blocks * np.log(np.maximum(inside, LEAST_SHARE)))
-
-
 def chip_yield(width: Width, dies, question: Question) -> Estimate:
     """Chip yield over dies; the interval holds that of the dies drawn and that of the device's failure share."""
 
     def at(end):
-        loss = 1 - chip_pass(np.minimum(width.shares(dies, end), 1), question)
+        shares = np.minimum(width.shares(dies, end), 1)
+        loss = array_failure(shares, question.devices, question.blocks, question.spares)
         return bounded_mean(float(loss.sum()), float((loss * loss).sum()), len(loss)).complement()
 
     value, worst, best = at("value"), at("high"), at("low")
@@ -231,7 +224,9 @@ def _table(question: Question, file: ProcessFile, widths: list[Width], yields: l
     for drawn, width, chips in zip(question.width_um, widths, yields):
         area = _chip_area(question, drawn)
         area_cm2 = area / SQUARE_CENTIMETRE
-        good = chips.scaled(_defect_yield(question, area_cm2) * _used_share(question) / area_cm2)
+        good = chips.scaled(
+            defect_yield(area_cm2 * question.defects_per_cm2, question.clustering) * _used_share(question) / area_cm2
+        )
         row = {"process": file.name, "device": question.device, "width_um": drawn, "length_um": question.length_um}
         row |= columns_of("device_failure", _plain(width.whole["any"]))
         for reason in width.margins.reasons:
@@ -248,11 +243,6 @@ def _chip_area(question: Question, width_um: float) -> float:
     """Chip area [m^2]: a fixed part and the cells, which grow with the drawn width."""
     cell = si(question, "cell_area_um2") + si(question, "cell_length_um") * width_um * SUFFIXES["um"]
     return si(question, "fixed_area_mm2") + question.devices * cell
-
-
-def _defect_yield(question: Question, area_cm2: float) -> float:
-    """Negative-binomial yield; C. H. Stapper, IBM J. Res. Dev. 20, 228 (1976) (from memory)."""
-    return (1 + area_cm2 * question.defects_per_cm2 / question.clustering) ** -question.clustering
 
 
 def _used_share(question: Question) -> float:
