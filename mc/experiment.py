@@ -92,4 +92,10 @@ class Experiment:
 
     def __call__(self, block: Block) -> Moments:
         """Tally of one block. Raises FloatingPointError when an output is not finite."""
-        return self.tally.of(self.grid, (_outputs(self.model, draws) for draws in self.inputs.slices(block)))
+        return self.tally.of(self.grid, self._evaluated(block))
+
+    def _evaluated(self, block):
+        for draws in self.inputs.slices(block):
+            outputs = _outputs(self.model, draws)
+            del draws  # the next slice then takes their place in the cache
+            yield outputs

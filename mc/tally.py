@@ -61,11 +61,12 @@ class Moments:
         for values in slices:
             tally["count"] += values.shape[1]
             for row, sample in enumerate(values):
-                scaled = (sample - grid.center[row]) * (1 / grid.scale[row])
+                scaled = sample - grid.center[row]
+                scaled *= 1 / grid.scale[row]
                 total = scaled.sum()
                 if not np.isfinite(total):
                     raise FloatingPointError(f"output {row} of a model is not finite")
-                cls._take(tally, row, sample, scaled, total)
+                cls._take(grid, tally, row, sample, scaled, total)
         return cls(grid=grid, **tally)
 
     @classmethod
@@ -73,7 +74,7 @@ class Moments:
         return {"count": 0, "powers": np.zeros((len(grid.center), 4))}
 
     @classmethod
-    def _take(cls, tally, row, sample, scaled, total):
+    def _take(cls, grid, tally, row, sample, scaled, total):
         squared = scaled * scaled
         third, fourth = (np.einsum("i,i->", squared, other) for other in (scaled, squared))
         tally["powers"][row] += total, squared.sum(), third, fourth
@@ -118,12 +119,16 @@ class Tally(Moments):
         }
 
     @classmethod
-    def _take(cls, tally, row, sample, scaled, total):
-        super()._take(tally, row, sample, scaled, total)
-        place = np.clip(scaled * CELLS_PER_SIGMA + REACH * CELLS_PER_SIGMA, 0, CELLS - 1).astype(np.intp)
-        tally["cells"][row] += np.bincount(place, minlength=CELLS)
-        tally["smallest"][row] = min(tally["smallest"][row], sample.min())
-        tally["largest"][row] = max(tally["largest"][row], sample.max())
+    def _take(cls, grid, tally, row, sample, scaled, total):
+        super()._take(grid, tally, row, sample, scaled, total)
+        scaled *= CELLS_PER_SIGMA  # the power sums are done with it
+        scaled += REACH * CELLS_PER_SIGMA
+        smallest, largest = sample.min(), sample.max()
+        if max(largest - grid.center[row], grid.center[row] - smallest) >= REACH * grid.scale[row]:
+            scaled = np.clip(scaled, 0, CELLS - 1)
+        tally["cells"][row] += np.bincount(scaled.astype(np.intp), minlength=CELLS)
+        tally["smallest"][row] = min(tally["smallest"][row], smallest)
+        tally["largest"][row] = max(tally["largest"][row], largest)
 
     def _sums(self, other):
         return super()._sums(other) | {

@@ -13,6 +13,7 @@ from scipy.optimize import brentq
 from scipy.special import ndtri
 
 _NORMALS = np.linspace(-8.5, 8.5, 17 * 64 + 1)  # the table's grid; linear interpolation errs below 1e-5 sigma
+_FURTHEST = 40  # the table goes on straight to here, further than any estimator of rare events reaches
 _STEPS_PER_SIGMA = 400
 _FEWEST_CELLS = 8  # of a weight; many dopants need few, since their sum forgets the law of one
 _LARGEST_COUNT = 50_000  # above it the law is that of this count continued in 1/sqrt(count), its skew there 0.006
@@ -107,6 +108,13 @@ def compound_poisson_quantiles(normal, mean_count, density):
     return (np.interp(normal, reached[rising], edges[rising]) - mean) / sigma
 
 
+def _continued(table):
+    """A table on _NORMALS, continued straight to +-_FURTHEST on the same steps."""
+    steps = np.arange(1, (_FURTHEST - _NORMALS[-1]) * 64 + 1)
+    below, above = table[1] - table[0], table[-1] - table[-2]
+    return np.concatenate([table[0] - below * steps[::-1], table, table[-1] + above * steps])
+
+
 @dataclass(frozen=True, kw_only=True)
 class CountedLaw:
     """Standardised scatter of counted dopants around one nominal device, tabulated.
@@ -144,11 +152,12 @@ class CountedLaw:
         at_more = compound_poisson_quantiles(_NORMALS, more, density)
         low, middle, high = more**-0.5, mean_count**-0.5, fewer**-0.5
         slopes = (at_fewer - at_nominal) / (high - middle), (at_nominal - at_more) / (middle - low)
+        center, *slopes = (_continued(table) for table in (at_nominal, *slopes))
         return cls(
-            normal_start=float(_NORMALS[0]),
+            normal_start=-float(_FURTHEST),
             steps_per_normal=64.0,
-            center=at_nominal[:-1],
-            rise=np.diff(at_nominal),
+            center=center[:-1],
+            rise=np.diff(center),
             slope=np.concatenate([slope[:-1] for slope in slopes]),
             slope_rise=np.concatenate([np.diff(slope) for slope in slopes]),
             inverse_root=middle,
@@ -157,16 +166,28 @@ class CountedLaw:
     def standardised(self, normal, mean_count):
         """Scatter in units of its own sigma.
 
-        normal : standard normal draws [1], any shape; beyond +-8.5 the last slope goes on
+        normal : standard normal draws [1], any shape; -40 to 40, beyond +-8.5 the last slope goes on
         mean_count : mean number of dopants of each device [1], broadcasts with `normal`
         Returns (sum of weights - mean)/sigma [1], increasing in `normal`.
         """
-        place = (normal - self.normal_start) * self.steps_per_normal
-        floor = np.clip(np.floor(place), 0, self.center.size - 1)
-        share = place - floor
+        return self.at_inverse_root(normal, 1 / np.sqrt(mean_count))
+
+    def at_inverse_root(self, normal, inverse_root_count):
+        """Scatter in units of its own sigma, from what the table is linear in.
+
+        normal : see `standardised` [1]
+        inverse_root_count : 1/sqrt(mean number of dopants) [1]
+        Returns what `standardised` does [1].
+        """
+        place = normal * self.steps_per_normal - self.normal_start * self.steps_per_normal
+        floor = np.floor(place)
         cell = floor.astype(np.intp)
-        distance = 1 / np.sqrt(mean_count) - self.inverse_root
-        sided = cell + (distance < 0) * self.center.size
-        center = self.center.take(cell, mode="clip") + share * self.rise.take(cell, mode="clip")
-        slope = self.slope.take(sided, mode="clip") + share * self.slope_rise.take(sided, mode="clip")
-        return center + distance * slope
+        share = place - floor
+        center = share * self.rise.take(cell, mode="clip")
+        center += self.center.take(cell, mode="clip")
+        distance = inverse_root_count - self.inverse_root
+        cell = cell + (distance < 0) * self.center.size
+        slope = share * self.slope_rise.take(cell, mode="clip")
+        slope += self.slope.take(cell, mode="clip")
+        slope *= distance
+        return slope + center

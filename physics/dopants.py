@@ -54,20 +54,35 @@ def weighted_count(profile: Profile, depletion_width, width, length, power, frin
     return per_length * length
 
 
-def dopant_sigma(profile: Profile, depletion_width, width, length, oxide_capacitance, fringe_shape=0.0):
-    """Standard deviation of the threshold of ONE device from the number and place of its dopants.
+def dopant_root_and_sigma(profile: Profile, depletion_width, width, length, oxide_capacitance, fringe_shape=0.0):
+    """Root of the mean number of a device's dopants, and the standard deviation of its threshold by their scatter.
 
     profile : doping profile, densities in [m^-3]
     depletion_width : depletion width [m]
     width, length : channel width and length [m]
     oxide_capacitance : gate oxide capacitance [F/m^2]
     fringe_shape : see `weighted_count` [1]
-    Returns sigma [V]. A pair's difference has sqrt(2) times this.
+    Returns root [1] and sigma of ONE device [V]. A pair's difference has sqrt(2) times this sigma.
     Source: (q/C_ox) sqrt(N x_d/(3 W L)) for uniform doping; K. Takeuchi et al., IEDM 1997 (memory); P. A. Stolk et al.,
     IEEE Trans. Electron Devices 45, 1960 (1998), with phi = phi_F.
     """
-    shift = single_dopant_shift(oxide_capacitance, width, length)
-    return shift * np.sqrt(weighted_count(profile, depletion_width, width, length, 2, fringe_shape))
+    place = profile, depletion_width, width, length
+    root = np.sqrt(weighted_count(*place, 0, fringe_shape))
+    if fringe_shape:
+        scale = np.sqrt(weighted_count(*place, 2, fringe_shape))
+    else:
+        scale = root * np.sqrt(profile.mean_square_weight(depletion_width))
+    return root, single_dopant_shift(oxide_capacitance, width, length) * scale
+
+
+def dopant_sigma(profile: Profile, depletion_width, width, length, oxide_capacitance, fringe_shape=0.0):
+    """The sigma of `dopant_root_and_sigma` alone.
+
+    Arguments as in `dopant_root_and_sigma`.
+    Returns sigma of one device [V].
+    Source: see there.
+    """
+    return dopant_root_and_sigma(profile, depletion_width, width, length, oxide_capacitance, fringe_shape)[1]
 
 
 def asenov_sigma(oxide_thickness, doping, width, length):

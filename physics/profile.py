@@ -52,7 +52,16 @@ class UniformProfile:
         Returns integral of N (1 - x/x_d)^power over the depletion region [m^-2].
         Source: elementary integral, N x_d/(power + 1).
         """
-        return self.doping * depletion_width / (power + 1)
+        dopants = self.doping * depletion_width
+        return dopants / (power + 1) if power else dopants
+
+    def mean_square_weight(self, depletion_width):
+        """Mean of (1 - depth/depletion_width)^2 over the dopants.
+
+        depletion_width : depletion width [m] (not used by this profile)
+        Returns mean square [1]. Source: elementary integral.
+        """
+        return 1 / 3
 
     def scaled(self, factor):
         """The same profile with every density multiplied.
@@ -110,6 +119,14 @@ class StepProfile:
         below = (1 - np.minimum(self.surface_depth / depletion_width, 1)) ** (power + 1)
         mean_doping = self.surface_doping + (self.doping - self.surface_doping) * below
         return mean_doping * depletion_width / (power + 1)
+
+    def mean_square_weight(self, depletion_width):
+        """Mean of (1 - depth/depletion_width)^2 over the dopants.
+
+        depletion_width : depletion width [m]
+        Returns mean square [1]. Source: `weighted_dopants`.
+        """
+        return self.weighted_dopants(depletion_width, 2) / self.weighted_dopants(depletion_width, 0)
 
     def scaled(self, factor):
         """The same profile with every density multiplied.

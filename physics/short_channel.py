@@ -1,6 +1,6 @@
-"""Short-channel effect: a factor on the bulk depletion charge, at most one.
+"""Short-channel effect: the part of the bulk depletion charge's voltage drop that the junctions take from the gate.
 
-Every kind has one method, `charge_factor(electrostatics, length, oxide_thickness, drain_voltage)`.
+Every kind has one method, `lowering(electrostatics, bulk_drop, length, oxide_thickness, drain_voltage)`.
 """
 
 from dataclasses import dataclass
@@ -75,16 +75,20 @@ def quasi_two_dimensional_shift(length_ratio, barrier, drain_voltage):
     squared = decay * decay
     at_drain = barrier + drain_voltage
     root = np.sqrt(barrier * at_drain)
-    return 2 * decay * ((barrier + at_drain) * decay + (1 + squared) * root) / (1 - squared) ** 2
+    shift = (barrier + at_drain) * decay  # has the full shape, so that the rest can be done in place
+    shift += (1 + squared) * root
+    shift *= decay
+    shift /= 0.5 * (1 - squared) ** 2
+    return shift
 
 
 @dataclass(frozen=True, kw_only=True)
 class LongChannel:
     """No short-channel effect."""
 
-    def charge_factor(self, electrostatics, length, oxide_thickness, drain_voltage):
-        """Factor [1], exactly one. Arguments as in `QuasiTwoDimensional.charge_factor`."""
-        return 1.0
+    def lowering(self, electrostatics, bulk_drop, length, oxide_thickness, drain_voltage):
+        """Lowering [V], exactly none. Arguments as in `QuasiTwoDimensional.lowering`."""
+        return 0.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -96,9 +100,9 @@ class ChargeSharing:
 
     junction_depth: float
 
-    def charge_factor(self, electrostatics, length, oxide_thickness, drain_voltage):
-        """Factor [1]. Arguments as in `QuasiTwoDimensional.charge_factor`. Source: `charge_sharing_factor`."""
-        return charge_sharing_factor(electrostatics.depletion_width, length, self.junction_depth)
+    def lowering(self, electrostatics, bulk_drop, length, oxide_thickness, drain_voltage):
+        """Lowering [V]. Arguments as in `QuasiTwoDimensional.lowering`. Source: `charge_sharing_factor`."""
+        return bulk_drop * (1 - charge_sharing_factor(electrostatics.depletion_width, length, self.junction_depth))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -110,14 +114,15 @@ class QuasiTwoDimensional:
 
     eta: float = 1.0
 
-    def charge_factor(self, electrostatics, length, oxide_thickness, drain_voltage):
-        """The shift expressed as a factor on the bulk depletion charge, so that it multiplies the width's factor.
+    def lowering(self, electrostatics, bulk_drop, length, oxide_thickness, drain_voltage):
+        """Lowering of the threshold of a wide channel.
 
         electrostatics : see `physics.threshold.Electrostatics`
+        bulk_drop : bulk charge over oxide capacitance [V]
         length : effective channel length [m]
         oxide_thickness : gate oxide [m]
         drain_voltage : drain to source [V], >= 0
-        Returns factor [1], < 1. Raises ChannelTooShort below LEAST_LENGTH_RATIO decay lengths.
+        Returns lowering [V], > 0. Raises ChannelTooShort below LEAST_LENGTH_RATIO decay lengths.
         Source: `quasi_two_dimensional_shift`.
         """
         decay = quasi_two_dimensional_length(oxide_thickness, electrostatics.depletion_width, self.eta)
@@ -127,8 +132,7 @@ class QuasiTwoDimensional:
                 f"{1e9 * np.min(length):.0f} nm is shorter than {LEAST_LENGTH_RATIO:g} decay lengths of the junctions' field, "
                 f"{1e9 * LEAST_LENGTH_RATIO * np.max(decay):.0f} nm: no barrier is left"
             )
-        shift = quasi_two_dimensional_shift(ratio, electrostatics.junction_barrier, drain_voltage)
-        return 1 - shift * OXIDE_PERMITTIVITY / oxide_thickness / electrostatics.bulk_charge
+        return quasi_two_dimensional_shift(ratio, electrostatics.junction_barrier, drain_voltage)
 
 
 ShortChannel = LongChannel | ChargeSharing | QuasiTwoDimensional

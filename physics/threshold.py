@@ -48,18 +48,18 @@ def flat_band_voltage(work_function_difference, oxide_charge, oxide_capacitance)
     return work_function_difference - oxide_charge / oxide_capacitance
 
 
-def long_channel_threshold(flat_band_voltage, surface_potential, bulk_charge, oxide_capacitance, polarity=1):
+def long_channel_threshold(flat_band_voltage, surface_potential, bulk_drop, polarity=1):
     """Threshold voltage of a wide, long channel, against the source.
 
     flat_band_voltage : flat-band voltage [V]
     surface_potential : band bending at threshold without body bias, 2 phi_F for uniform doping [V]
-    bulk_charge : magnitude of the depletion charge, with body bias and any factors [C/m^2]
-    oxide_capacitance : gate oxide capacitance [F/m^2]
+    bulk_drop : magnitude of the depletion charge, with body bias and any factors, over the oxide capacitance [V]
     polarity : +1 n-channel, -1 p-channel [1]
     Returns threshold voltage [V], signed.
     Source: Neamen, 4th ed., eq. 10.31a and 10.32a.
     """
-    return flat_band_voltage + polarity * (surface_potential + bulk_charge / oxide_capacitance)
+    magnitude = surface_potential + bulk_drop
+    return flat_band_voltage + magnitude if polarity == 1 else flat_band_voltage - magnitude
 
 
 def body_coefficient(doping, oxide_capacitance):
@@ -153,18 +153,20 @@ def threshold_voltage(device: Device, state: Electrostatics, drain_voltage=0.0):
     state : `electrostatics(device)`
     drain_voltage : magnitude of drain to source [V], >= 0; only the quasi-two-dimensional short channel uses it
     Returns threshold voltage [V], negative for p-channel; the broadcast shape.
-    The width's and the length's factors multiply: an approximation, since each is derived as if the other were absent.
+    The width's factor multiplies what the length leaves of the bulk charge: an approximation, since each is derived as if
+    the other were absent.
     Raises ChannelTooShort, see `physics.short_channel`.
     """
     width_factor = device.edge.charge_factor(state.depletion_width, device.width, device.oxide_thickness)
-    length_factor = device.short_channel.charge_factor(state, device.length, device.oxide_thickness, drain_voltage)
-    charge = width_factor * length_factor * state.bulk_charge
     capacitance = oxide_capacitance(device.oxide_thickness)
+    wide_drop = state.bulk_charge / capacitance
+    lowering = device.short_channel.lowering(state, wide_drop, device.length, device.oxide_thickness, drain_voltage)
+    drop = width_factor * (wide_drop - lowering)
     work_function_difference = device.gate_work_function + device.flat_band_shift - state.silicon_work_function
     flat_band = flat_band_voltage(work_function_difference, device.oxide_charge, capacitance)
     potential = state.surface_potential
     if np.isfinite(device.gate_doping):
-        potential = potential + gate_depletion_potential(charge, device.gate_doping)
+        potential = potential + gate_depletion_potential(drop * capacitance, device.gate_doping)
     if device.quantum_shift:
         potential = potential + quantum_potential(state.bulk_charge / SILICON_PERMITTIVITY, device.temperature)
-    return long_channel_threshold(flat_band, potential, charge, capacitance, device.polarity)
+    return long_channel_threshold(flat_band, potential, drop, device.polarity)

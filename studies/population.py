@@ -6,8 +6,6 @@ the same door.
 """
 
 from collections.abc import Mapping
-from functools import reduce
-from operator import add
 from typing import NamedTuple
 
 import numpy as np
@@ -66,10 +64,13 @@ class Population:
         """A drawn width and length; raises InputError, see `make_geometry`."""
         return make_geometry(self.nominal, self.record, self.inputs, self.where, width_um, length_um)
 
-    def _deviation(self, draws: Draws, cause: str):
-        """Deviation from nominal, the levels added up; 0 where none is drawn."""
-        parts = [item.law.from_normal(draws[item.name]) for item in self._varied.get(cause, ()) if item.name in draws]
-        return reduce(add, parts) if parts else 0.0
+    def _deviated(self, draws: Draws, cause: str, nominal=0.0):
+        """`nominal` and the deviations from it, the levels added up."""
+        total = nominal
+        for item in self._varied.get(cause, ()):
+            if item.name in draws:
+                total = total + item.law.from_normal(draws[item.name])
+        return total
 
     def _normal(self, draws: Draws, cause: str):
         return draws.get(self._scatter.get(cause))
@@ -77,17 +78,16 @@ class Population:
     def silicon(self, draws: Draws) -> Silicon:
         """Doping, oxide and flat band of the devices that the draws describe, arrays of the draws' shape."""
         device = self.nominal.varied(
-            oxide_thickness=self.nominal.oxide_thickness * (1 + self._deviation(draws, "oxide_thickness")),
-            profile=self.nominal.profile.scaled(1 + self._deviation(draws, "doping")),
-            flat_band_shift=self._deviation(draws, "flat_band"),
+            oxide_thickness=self.nominal.oxide_thickness * self._deviated(draws, "oxide_thickness", 1.0),
+            profile=self.nominal.profile.scaled(self._deviated(draws, "doping", 1.0)),
+            flat_band_shift=self._deviated(draws, "flat_band"),
         )
         return Silicon(device, electrostatics(device))
 
     def devices(self, draws: Draws, geometry: Geometry, silicon: Silicon) -> Device:
         """Devices of one geometry: dimensions with their variation and rough edges, oxide with its roughness."""
-        width, length = geometry.width, geometry.length
-        width = width + self._deviation(draws, "width")
-        length = length + self._deviation(draws, "length")
+        width = self._deviated(draws, "width", geometry.width)
+        length = self._deviated(draws, "length", geometry.length)
         if (normal := self._normal(draws, "gate_edges")) is not None:
             length = length + geometry.gate_edge_sigma * normal
         if (normal := self._normal(draws, "active_edges")) is not None:
@@ -111,10 +111,10 @@ class Population:
     def _dopant_scatter(self, normal, geometry, device, state):
         place = device.profile, state.depletion_width, device.width, device.length
         capacitance = oxide_capacitance(device.oxide_thickness)
-        sigma = dopants.dopant_sigma(*place, capacitance, geometry.fringe_shape)
-        if geometry.counted is not None:
-            normal = geometry.counted.standardised(normal, dopants.weighted_count(*place, 0, geometry.fringe_shape))
-        return device.polarity * sigma * normal
+        root, sigma = dopants.dopant_root_and_sigma(*place, capacitance, geometry.fringe_shape)
+        scatter = normal if geometry.counted is None else geometry.counted.at_inverse_root(normal, 1 / root)
+        scatter = sigma * scatter
+        return scatter if device.polarity == 1 else -scatter
 
     def thresholds(self, draws: Draws, geometry: Geometry, silicon: Silicon, drain_voltage: float):
         """Threshold voltages [V], signed, one for every draw."""
@@ -129,7 +129,7 @@ class Population:
         mobility = (
             si(self.record, "mobility_cm2_per_vs")
             * (device.temperature / 300) ** MOBILITY_EXPONENT
-            * (1 + self._deviation(draws, "mobility"))
+            * self._deviated(draws, "mobility", 1.0)
         )
         if (normal := self._normal(draws, "current_factor")) is not None:
             mobility = mobility * (1 + geometry.current_factor_sigma * normal)

@@ -39,7 +39,7 @@ def example_threshold(kt, charge, doping_per_cm3, oxide_nm, interface_per_cm2, w
     capacitance = oxide_capacitance(oxide_nm * 1e-9)
     flat_band = flat_band_voltage(work_function_difference, interface_per_cm2 * 1e4 * charge, capacitance)
     potential, _, bulk_charge = depletion(doping_per_cm3, kt)
-    return long_channel_threshold(flat_band, potential, bulk_charge, capacitance, polarity)
+    return long_channel_threshold(flat_band, potential, bulk_charge / capacitance, polarity)
 
 
 def test_example_10_3_flat_band_as_printed(neamen):
@@ -115,7 +115,7 @@ def implant(kt):
     """Example 11.6: threshold before the implant [V], and the dose [cm^-2] that lifts it to +0.4 V."""
     capacitance = oxide_capacitance(18e-9)
     potential, _, charge = depletion(5e15, kt)
-    before = long_channel_threshold(-1.25, potential, charge, capacitance)
+    before = long_channel_threshold(-1.25, potential, charge / capacitance)
     return before, (0.4 - before) / implant_shift(1e4, capacitance)
 
 
