@@ -102,6 +102,20 @@ def timing_sentences(question, rows, min_width) -> tuple[str, ...]:
     )
 
 
+def timing_tail_notes(question, tails) -> list[str]:
+    """How a target beyond counting was answered, and what its estimator doubts. tails : one a width, or none"""
+    if not tails:
+        return []
+    notes = [
+        f"A yield of {100 * question.target_yield:.12g} % asks for rarer chips than the dies drawn can show: periods, and "
+        "yields near 100 %, come from an estimator of rare events on the same model. So far out they rest on the laws' tails "
+        "and on the path's delay being known by four cumulants."
+    ]
+    for width, tail in zip(question.width_um, tails):
+        notes += [f"W = {width:g} um: the estimator doubts itself: {doubt}." for doubt in tail.doubts]
+    return notes
+
+
 def pair_sentences(question, process: str, best, searches) -> tuple[str, ...]:
     """The pair answer in words. best : the search of the smallest area; searches : those that met the target"""
     tally, row = best.judged[best.shown_width()]

@@ -16,6 +16,7 @@ from studies.notes import CAUTION
 
 WIDTH = 80
 LARGEST_CAUSES = 4
+LEAST_PERCENT = 1e-4  # a loss below a hundredth of a percent is shown as a share
 
 
 class Printer(Console):
@@ -104,11 +105,12 @@ def _half_width(shares, part: str) -> float:
 def timing_tables(answer: Answer) -> list[Table]:
     """Yield, slowest path and the period that the target needs."""
     question = answer.question
-    target = f"{100 * question['yield']:g} %"
+    target = f"{100 * question['yield']:.12g} %"
+    rare = 1 - question["yield"] < LEAST_PERCENT
     rows = [
         [
             f"{row['width_um']:g}",
-            _bounds(row, "yield", "", 2, 100),
+            _lost(row) if rare else _bounds(row, "yield", "", 2, 100),
             _plus_minus(row, "slowest_mean", "_ps", 1),
             _plus_minus(row, "slowest_sigma", "_ps", 1),
             _bounds(row, "period_at_target", "_ps", 0),
@@ -119,8 +121,20 @@ def timing_tables(answer: Answer) -> list[Table]:
         f"Timing: {one_line(answer.process)}, {question['paths']} paths of {question['stages']} stages at "
         f"{question['supply_v']:g} V, {answer.samples} dies"
     )
-    columns = ["W um", f"yield % at {question['period_ps']:g} ps", "slowest ps", "sigma ps", f"ps for {target}"]
+    columns = [
+        "W um",
+        f"{'lost' if rare else 'yield %'} at {question['period_ps']:g} ps",
+        "slowest ps",
+        "sigma ps",
+        f"ps for {target}",
+    ]
     return [_table(title, columns, rows)]
+
+
+def _lost(row) -> str:
+    """Share of chips lost, for yields too near one to be read as percent."""
+    value, low, high = (1 - row[name] for name in ("yield", "yield_high", "yield_low"))
+    return f"{value:.1e} [{low:.1e}, {high:.1e}]"
 
 
 def pair_tables(answer: Answer) -> list[Table]:

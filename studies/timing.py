@@ -22,11 +22,12 @@ from mc.tally import Grid, Moments
 from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.chip import Side, Stage, fail_probability, slowest_path
 from studies.errors import InputError, one_line
-from studies.notes import bound_notes, model_notes, timing_sentences
+from studies.notes import bound_notes, model_notes, timing_sentences, timing_tail_notes
 from studies.population import Population
 from studies.process_file import LEVELS, ProcessFile
 from studies.question import WidthQuestion
 from studies.settings import Settings, Workers
+from studies.timing_tail import Tail, TailAnswer, beyond_counting, tail_answers
 from studies.units import SUFFIXES
 
 BLOCK = 2048
@@ -128,8 +129,16 @@ def answer(
         backend=workers.backend,
         progress=progress,
     )
+    rows = range(len(chips.stages))
     yields = _yields_at_period(tally, len(chips.stages))
-    periods = [_period_at(tally, chips, row, question.target_yield) for row in range(len(chips.stages))]
+    tails = _tails(question, chips, tally, samples, workers)
+    if tails:
+        yields = [
+            tail.chip_yield if beyond_counting(each.value, samples) else each for tail, each in zip(tails, yields)
+        ]
+        periods = [tail.period.scaled(1 / SUFFIXES["ps"]) for tail in tails]
+    else:
+        periods = [_period_at(tally, chips, row, question.target_yield) for row in rows]
     min_width = _smallest_width(question, yields)
     table = _table(question, file, tally, yields, periods)
     met = bool(np.isfinite(min_width.value))
@@ -147,12 +156,14 @@ def answer(
         sentences=timing_sentences(question, table.to_dict("records"), min_width),
         notes=(
             *(note for side in chips.stages[0].sides for note in model_notes(side.population)),
-            *bound_notes(table, "dies", "ask for more samples"),
+            *(() if tails else bound_notes(table, "dies", "ask for more samples")),
+            *timing_tail_notes(question, tails),
             *precision_notes(settings, samples),
         ),
         samples=samples,
         block_size=BLOCK,
-        evaluations=samples * sum(stage.evaluations_per_die for stage in chips.stages),
+        evaluations=samples * sum(stage.evaluations_per_die for stage in chips.stages)
+        + sum(tail.dies * stage.evaluations_per_die for tail, stage in zip(tails, chips.stages)),
         seconds=perf_counter() - started,
         met=met,
     )
@@ -201,6 +212,17 @@ def _stages(question: Question, file: ProcessFile) -> tuple[Stage, ...]:
         )
         for width in question.width_um
     )
+
+
+def _tails(question: Question, chips: Chips, tally: TimingTally, samples: int, workers: Workers) -> list[TailAnswer]:
+    """Each width's tail where the target asks for more than the dies drawn can show; none where they can."""
+    if not beyond_counting(question.target_yield, samples):
+        return []
+    period = float(chips.periods[0, 0])
+    tails = [Tail.of(stage, question.paths, period, chips.inputs, SLOWEST) for stage in chips.stages]
+    summaries = [Summary(tally.slowest, row) for row in range(len(tails))]
+    guesses = [(each.mean().value, each.sigma().value) for each in summaries]
+    return tail_answers(tails, question.target_yield, guesses, workers)
 
 
 def _yield(tally: TimingTally, row: int, column: int) -> Estimate:
@@ -261,6 +283,7 @@ def _table(question: Question, file: ProcessFile, tally: TimingTally, yields, pe
             | {"slowest_mean_low_ps": mean.low, "slowest_mean_high_ps": mean.high}
             | {"slowest_sigma_low_ps": sigma.low, "slowest_sigma_high_ps": sigma.high}
             | {"period_at_target_low_ps": periods[row].low, "period_at_target_high_ps": periods[row].high}
+            | {"yield_method": yields[row].method}
         )
         rows.append(row_columns | asked_columns(question, row_columns))
     return pd.DataFrame(rows)
