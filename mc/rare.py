@@ -9,16 +9,17 @@ from dataclasses import dataclass, replace
 from math import ceil
 
 import numpy as np
+from scipy.special import ndtr
 
 from mc.intervals import fraction_exact
 from mc.rare_calls import CountedLimitState
 from mc.rare_diagnostics import UNRELIABLE_SHAPE, effective_sample_size, log_interval, skewness, variation
-from mc.rare_pilot import CONDITIONAL, Pilot, annealing, subset_simulation
+from mc.rare_first import first_look
+from mc.rare_pilot import CONDITIONAL, PILOT_SIZE, Pilot, subset_simulation
 from mc.rare_regions import Regions, find_regions, revisited
-from mc.rare_sampling import TRIAL, Training, final_sample, first_mixture, trained
+from mc.rare_sampling import TRIAL, Training, final_sample, first_mixture, plane_component, trained
 from mc.streams import generator
 
-PILOT_SIZE = 300  # points a level
 SECOND_SIZE = 1000  # the same, for a second opinion
 UNCLEAR_SHAPE = 0.5  # Pareto shape from which on one is asked for
 COUNTED = 5_000  # calls up to which plain counting is preferred
@@ -26,6 +27,8 @@ RESERVE = 0.3  # share of the calls that the search for regions leaves
 DISAGREEMENT = 2.5  # standard errors between pilot and estimate
 FEWEST_EFFECTIVE = 50
 CURVED_TRIAL = 1000  # draws of a round of training where no plane is near the boundary
+FOUND_SHARE = 0.5  # of the weight, before any fit, for the region of a descent
+NEW_SHARE = (0.05, 0.5)  # of the weight for regions that the training shows, bounds
 MOST_RETURNS = 4  # searches from the failures of the training
 AIM = 0.85  # share of the target that the final sample is planned for
 CURVED_AIM = 0.7  # the same where no plane is near the boundary: what spread is seen is then mostly too small
@@ -96,14 +99,13 @@ def failure_probability(
     need = 1.1 / np.exp(pilot.log_probability) / target_cov**2
     if pilot.reached and need < COUNTED:
         return counted(state, stream("count"), ceil(need), target_cov, level)
-    if not pilot.reached:
-        pilot = annealing(state, stream("annealing"), PILOT_SIZE, reserve)
-    known = pilot.log_probability if pilot.reached else None
-    regions = find_regions(state, stream("search"), pilot.failures, known, reserve)
+    first, pilot, found = first_look(state, stream, pilot, reserve)
+    known = pilot.log_probability if pilot.reached or first.flat else None
+    regions = find_regions(state, stream("search"), first, pilot.failures, known, reserve)
     if not pilot.reached and not len(regions.distances):
         return counted(state, stream("count"), state.left, target_cov, level)
     aim = (CURVED_AIM if regions.continuous else AIM) * target_cov
-    regions, training = trained_on_all(state, stream, regions, pilot.failures, aim, reserve)
+    regions, training = trained_on_all(state, stream, regions, pilot.failures, found, aim, reserve)
     sample = final_sample(state, stream("estimate"), training, aim)
     if sample is None or not sample.weights.any():
         return pilot_alone(state, stream("count"), pilot, target_cov, level)
@@ -113,23 +115,39 @@ def failure_probability(
     return last_resort(state, stream("last resort"), estimate, pilot) if estimate.notes else estimate
 
 
-def trained_on_all(state, stream, regions: Regions, failures, aim, reserve) -> tuple[Regions, Training]:
+def trained_on_all(state, stream, regions: Regions, failures, found, aim, reserve) -> tuple[Regions, Training]:
     """A trained mixture of all regions, those included that only its trial draws show.
 
-    stream : function of a name, a generator; failures : the pilot's, shape (m, dimension)
+    stream : function of a name, a generator; failures : the pilot's, shape (m, dimension); found : a descent, or None
     aim : coefficient of variation to be planned for; reserve : calls to leave
     """
+    mixture, samples = first_mixture(regions, failures), ()
+    if found is not None:
+        mixture, samples = mixture.joined_by(plane_component(found.normal, found.distance), FOUND_SHARE), found.samples
+    training = Training.begun(mixture, samples, fitted=len(regions.distances) < 2)
     for _ in range(MOST_RETURNS):
         known, trial = len(regions.distances), CURVED_TRIAL if regions.continuous else TRIAL
-        training = trained(state, stream(f"training {known}"), first_mixture(regions, failures), aim, trial)
-        if not training.samples:
+        before = len(training.samples)
+        training = trained(state, stream(f"training {known}"), training, aim, trial)
+        if len(training.samples) == before:
             break
-        shown = np.concatenate([sample.failures for sample in training.samples])
-        joined_regions = revisited(state, stream(f"return {known}"), regions, shown, reserve)
-        if len(joined_regions.distances) == known:
+        shown = np.concatenate([sample.failures for sample in training.samples[before:]])
+        more = revisited(state, stream(f"return {known}"), regions, shown, reserve)
+        if len(more.distances) == known:
             break
-        regions = joined_regions
+        training = with_regions(training, regions, more, failures)
+        regions = more
     return regions, training
+
+
+def with_regions(training: Training, before: Regions, after: Regions, failures) -> Training:
+    """The training with components for new regions, or a new one where the regions turned out to be something else."""
+    if after.continuous != before.continuous or len(after.distances) < len(before.distances):
+        return Training.begun(first_mixture(after, failures))
+    new = after.from_number(len(before.distances))
+    share = ndtr(-new.distances).sum() / ndtr(-after.distances).sum()
+    none = failures[:0]
+    return training.joined_by(first_mixture(new, none), np.clip(share, *NEW_SHARE))
 
 
 def _refuse_nonsense(dimension, seed, target_cov, max_calls, level):
@@ -184,12 +202,12 @@ def judged(state, sample, pilot: Pilot, regions: Regions, target_cov, level) -> 
     value, cov = float(sample.weights.mean()), variation(sample.weights)
     effective, shape = effective_sample_size(sample.weights), sample.shape
     lean = skewness(sample.weights) / np.sqrt(sample.weights.size)
-    low, high = log_interval(value, cov, effective - 1, level, lean)
+    low, high = log_interval(value, cov, effective - 1, level, lean, shape)
     doubts = {
         f"the target was not reached: coefficient of variation {cov:.2g}": cov > MISSED * target_cov,
         f"few effective samples: {effective:.0f}": effective < FEWEST_EFFECTIVE,
         f"the largest weights are too large to be averaged: Pareto shape {shape:.2f}": shape > UNRELIABLE_SHAPE,
-        "the search for failure regions was not finished": not (regions.complete or regions.continuous),
+        "the search for failure regions was not finished": regions.lost or not (regions.complete or regions.continuous),
         BELOW_PILOT: pilot.reached and well_below(value, cov, pilot),
     }
     return RareEstimate(

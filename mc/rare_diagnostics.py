@@ -4,6 +4,7 @@ import numpy as np
 from scipy import stats
 
 UNRELIABLE_SHAPE = 0.7  # above it the mean of the weights converges too slowly to be estimated (Vehtari and others)
+TAIL_BELOW, TAIL_ABOVE = 0.4, 0.8  # widening of an interval per Pareto shape, measured: 30 limit states, 60 runs each
 
 
 def effective_sample_size(weights):
@@ -62,16 +63,20 @@ def skewness(values):
     return float((deviation**3).mean() / spread**3) if spread > 0 else 0.0
 
 
-def log_interval(value, cov, degrees, level, lean=0.0):
-    """Interval of a positive mean, symmetric on the logarithmic scale but for what skewness adds at the upper end.
+def log_interval(value, cov, degrees, level, lean=0.0, shape=0.0):
+    """Interval of a positive mean on the logarithmic scale, wider where a heavy tail or skewness calls for it.
 
     cov : coefficient of variation of the mean; degrees : of freedom, for Student's quantile
     lean : skewness of the sample over the root of its size; many small and few large weights underrate the mean and its
         error together. The logarithm allows for some of it, the rest moves the upper limit.
+    shape : Pareto shape of the largest weights; most samples of a heavy tail lack its largest values, and so show too
+        little spread and too low a mean
     Returns (low, high). Source: delta method; P. Hall, J. R. Stat. Soc. B 54, 221 (1992), for the skewness (memory).
     """
     score = stats.t.ppf((1 + level) / 2, max(degrees, 1))
     error = np.sqrt(np.log1p(cov**2))
+    heavy = np.clip(shape, 0.0, UNRELIABLE_SHAPE)
     moved = max(0.0, (2 * score**2 + 1) * lean / 6 - score**2 * error / 2)
+    below, above = score * error * (1 + TAIL_BELOW * heavy), (score + moved) * error * (1 + TAIL_ABOVE * heavy)
     with np.errstate(over="ignore"):
-        return float(value * np.exp(-score * error)), float(min(1.0, value * np.exp((score + moved) * error)))
+        return float(value * np.exp(-below)), float(min(1.0, value * np.exp(above)))

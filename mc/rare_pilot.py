@@ -6,6 +6,7 @@ import numpy as np
 
 from mc.rare_calls import CountedLimitState
 
+PILOT_SIZE = 300  # points a level
 CONDITIONAL = 0.1  # share of a level that goes on to the next
 WANTED_ACCEPTANCE = 0.44
 ANNEALED_FROM = (2.0, 3.0, 4.0, 5.0)  # spreads, the first at which a tenth fails

@@ -9,9 +9,10 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.special import ndtri
-from scipy.stats import rankdata
 
 from mc.rare_calls import CountedLimitState
+from mc.rare_descent import descent
+from mc.rare_walks import MOST_TURNS, cost_of_walk, shrunk, walk
 
 DIVISORS = (2.2, 1.6, 1.2)  # a half-space at distance b is met by 1, 5 and 11 % of the draws with spread b/divisor
 SPREADS = (1.6, 2.2, 3.0, 4.0, 5.0)  # when the distance is not known
@@ -20,18 +21,17 @@ SLACK = 0.9  # a failure is explained from this share of a half-space's distance
 CLEARED = 0.89  # share of a half-space's distance to which points are pushed back
 MOST_PUSHES = 100
 SAME = 0.97  # cosine of two normals that are one region's
-CLOUD = 0.6  # spread of the points whose values give a normal
-INWARD = 1.08  # the cloud lies this much beyond the boundary, so that most of it fails by one margin
-SCALES = (0.95, 1.02, 1.08, 1.2)  # of the foot points that a walk tries
-MIXTURES = (0.3, 0.6, 0.85)  # shares of the present direction that it tries
-PLANE = 0.995  # share of the variance of a cloud's values from which on the boundary may be a plane,
-NEAR = 0.04  # and how near its foot point must then be to the boundary, in distances
-PROGRESS = 0.98  # a turn must come nearer than this share
-MOST_TURNS = 8  # of one walk
 FAINT = 18.0  # excess of a squared distance that makes a region's density exp(-9) of the nearest one's
+WALKABLE = 10  # dimensions up to which a walk by yes or no alone may arrive
+MOST_FAINT = 3  # walks to points too far out to matter, and more than regions: a curved set may matter by their number
+LIGHT = 0.25  # of a repeat that costs few calls
 MOST_REPEATS = 4  # walks in a row that lead to known regions
 MOST_REGIONS = 200
-ENOUGH_TO_JUDGE = 8  # regions, and every so many, at which it is asked whether they are one curved set
+JUDGED_AT = (8, 16, 32, 64, 128)  # regions at which it is asked whether they are one curved set
+MIRROR = (0.94, 1.02)  # shares of a region's nearest point between which its mirror image must begin
+DEEP = 0.5  # depth of the point inside a region to which a failure's way is followed [sigmas],
+BETWEEN_SHARES = np.array([0.2, 0.4, 0.6, 0.8])  # and where on it
+ROUND_LOOKS = 20
 BETWEEN = 1.06  # radius, in distances, at which it is looked between two neighbours
 
 
@@ -42,12 +42,17 @@ class Regions:
     normals : unit vectors, shape (k, dimension); distances : from the origin, shape (k,)
     complete : whether the last batch of draws met nothing new
     continuous : whether the half-spaces are pieces of one curved set, which no number of them explains
+    flat : whether the values tell no more than yes or no, so that walks are not to be trusted; of several regions in many
+        dimensions one may then hide, and the search does not count as complete
+    lost : whether a failure was met that leads to no region
     """
 
     normals: np.ndarray
     distances: np.ndarray
     complete: bool = False
     continuous: bool = False
+    flat: bool = False
+    lost: bool = False
 
     @classmethod
     def none(cls, dimension):
@@ -90,94 +95,15 @@ class Regions:
         kept = self.distances**2 <= (self.distances**2 + FAINT).min(initial=np.inf)
         return replace(self, normals=self.normals[kept], distances=self.distances[kept])
 
+    def from_number(self, first):
+        """The regions from a number on."""
+        return replace(self, normals=self.normals[first:], distances=self.distances[first:])
+
     def joined_by(self, point):
         """These regions and the one whose nearest point is `point`."""
         distance = np.linalg.norm(point)
-        return Regions(
-            normals=np.vstack([self.normals, point / distance]), distances=np.append(self.distances, distance)
-        )
-
-
-def nearest_failure(state, candidates):
-    """The candidate nearest to the origin that fails, or None. candidates : shape (n, dimension)."""
-    failed = candidates[state.failed(candidates)]
-    return failed[np.argmin(np.linalg.norm(failed, axis=1))] if len(failed) else None
-
-
-def shrunk(state, point, steps=(1 / 8, 1 / 64)):
-    """A failure moved towards the origin, to within the last step of the nearest failure that a grid shows."""
-    best = 1.0
-    for step in steps:
-        shares = best - step * np.arange(7, 0, -1)
-        failed = state.failed(shares[:, None] * point)
-        best = shares[failed].min() if failed.any() else best
-    return best * point
-
-
-def local_normals(state, random, point, regions):
-    """Directions towards failure near a failed point, shape (3, dimension), and how well the first fits [1].
-
-    Three readings of one cloud.
-
-    Least squares of the values of the failures outside known regions, in the unit of one margin: exact for a plane; of
-    the normal scores of all ranks, for values that are far from linear; and of the yes or no alone. The walk tries all
-    three, so that a reading that misleads costs calls and nothing else.
-    """
-    count = int(1.3 * state.dimension) + 12
-    offsets = CLOUD * random.standard_normal((count, state.dimension))
-    values = state(INWARD * point + offsets)
-    new = (values <= 0) & ~regions.contain(INWARD * point + offsets)
-    failed = new if new.sum() > state.dimension + 1 else np.full(count, True)
-    scores = ndtri((rankdata([values, np.sign(values)], axis=1) - 0.5) / count)
-    plane, fit = _plane(offsets[failed], values[failed])
-    normals = np.array([plane, *(_plane(offsets, score)[0] for score in scores)])
-    lengths = np.linalg.norm(normals, axis=1)
-    normals[lengths == 0] = point
-    return -normals / np.where(lengths == 0, -np.linalg.norm(point), lengths)[:, None], fit
-
-
-def _plane(offsets, heights):
-    """Slopes of the least-squares plane, shape (dimension,), and the share of variance it explains."""
-    if np.ptp(heights) == 0:
-        return np.zeros(offsets.shape[1]), 0.0
-    heights = heights / np.abs(heights).max()
-    design = np.column_stack([offsets, np.ones(len(offsets))])
-    fit = np.linalg.lstsq(design, heights, rcond=None)[0]
-    return fit[:-1], 1 - np.var(heights - design @ fit) / np.var(heights)
-
-
-def walk(state, random, point, regions):
-    """From a failure to the nearest failure of its region, approximately.
-
-    Each turn takes normals at the boundary. Where the first one's foot point fails and lies on the boundary, that is a
-    plane and the walk is over; otherwise it looks along all normals, along the mean of those that yes and no gave so
-    far, and along mixtures with the present direction. In the manner of A. M. Hasofer and N. C. Lind, J. Eng. Mech.
-    Div. 100, 111 (1974) and R. Rackwitz and B. Fiessler, Comput. Struct. 9, 489 (1978) (both from memory), with a
-    least-squares plane for gradients.
-    """
-    point, memory = shrunk(state, point), np.zeros(state.dimension)
-    for _ in range(MOST_TURNS):
-        normals, fit = local_normals(state, random, point, regions)
-        memory = memory + normals[-1]
-        directions = np.vstack([normals, memory / np.linalg.norm(memory)])
-        feet = (directions @ point)[:, None] * directions
-        found = nearest_failure(state, np.outer(SCALES, feet[0]))
-        if found is not None:
-            found = shrunk(state, found, steps=(1 / 64,))
-            if fit > PLANE and abs(np.linalg.norm(found) / np.linalg.norm(feet[0]) - 1) < NEAR:
-                return min(found, point, key=np.linalg.norm)
-        mixed = [foot + share * (point - foot) for share in MIXTURES for foot in feet[[0, 3]]]
-        others = nearest_failure(state, np.concatenate([scale * np.vstack([feet[1:], mixed]) for scale in SCALES[1:]]))
-        found = min((each for each in (found, others) if each is not None), key=np.linalg.norm, default=None)
-        if found is None or np.linalg.norm(found) > PROGRESS * np.linalg.norm(point):
-            break
-        point = shrunk(state, found)
-    return point
-
-
-def cost_of_walk(dimension):
-    """Calls that a turn of a walk may take at most, and the start."""
-    return 14 + int(1.3 * dimension) + 12 + 60
+        normals, distances = np.vstack([self.normals, point / distance]), np.append(self.distances, distance)
+        return replace(self, normals=normals, distances=distances)
 
 
 def explained_by_walks(state, random, regions, failures, reserve):
@@ -185,7 +111,7 @@ def explained_by_walks(state, random, regions, failures, reserve):
 
     Returns the regions and whether they look continuous.
     """
-    repeats, continuous = 0, False
+    repeats, continuous, faint = 0, False, 0
     unexplained = failures[~regions.explain(failures)]
     unexplained = unexplained[np.argsort(np.linalg.norm(unexplained, axis=1))]  # near ones fail by one margin alone
     while len(unexplained) and repeats < MOST_REPEATS and not continuous:
@@ -195,21 +121,74 @@ def explained_by_walks(state, random, regions, failures, reserve):
             or len(regions.distances) == MOST_REGIONS
         ):
             break
-        found = walk(state, random, unexplained[0], regions)
-        known = regions.knows(found) or not regions.matters(found)
-        repeats = repeats + 1 if known else 0
+        known, weight = False, 1.0
+        if regions.flat:
+            found, lost = flat_walk(state, random, unexplained[0], regions, reserve)
+            known, weight = found is None, 1.0 if lost else LIGHT
+            regions = replace(regions, lost=regions.lost or lost)
+        else:
+            found = walk(state, random, unexplained[0], regions)
+        faint += not known and not regions.matters(found)
+        known = known or regions.knows(found) or not regions.matters(found)
+        repeats = repeats + weight if known else 0
         if not known:
-            regions = regions.joined_by(found)
-            continuous = len(regions.distances) % ENOUGH_TO_JUDGE == 0 and is_continuous(state, regions)
+            before, regions = len(regions.distances), mirrored(state, regions.joined_by(found), found)
+            due = any(before < count <= len(regions.distances) for count in JUDGED_AT)
+            continuous = due and is_continuous(state, regions)
+        continuous = continuous or faint >= max(MOST_FAINT, len(regions.distances) + 1)
         unexplained = unexplained[1:]
         unexplained = unexplained[~regions.explain(unexplained)]
     return regions, continuous
 
 
+def mirrored(state, regions, point):
+    """The regions joined by the mirror image of the last one, where it is another: offsets fail on either side alike."""
+    if regions.explain(-point[None]).any():
+        return regions
+    outside, inside = state.failed(np.outer(MIRROR, -point))
+    return regions.joined_by(-point) if inside and not outside else regions
+
+
+def flat_walk(state, random, point, regions, reserve):
+    """Where the region of a failure begins by yes or no alone, None when it is known or faint; and whether it got lost."""
+    if is_connected(state, regions, point):
+        return None, False
+    point = shrunk(state, point)
+    spread = max(1.0, np.linalg.norm(point) / np.sqrt(state.dimension))
+    other = descent(state, random, point[None], spread, reserve, regions)
+    if other is None:
+        return None, state.dimension > WALKABLE
+    if other.compact:
+        return other.distance * other.normal, False
+    if state.dimension <= WALKABLE:
+        return walk(state, random, point, regions), False
+    return None, True
+
+
+def is_connected(state, regions, point):
+    """Whether a failure belongs to the region it is nearest to: it fails all the way from one to the other.
+
+    A region that is no half-space holds failures outside of its half-space too; noise and corners leave it convex.
+    """
+    point = shrunk(state, point)
+    nearest = np.argmax(regions.normals @ point - regions.distances)
+    inside = (regions.distances[nearest] + DEEP) * regions.normals[nearest]
+    between = point + BETWEEN_SHARES[:, None] * (inside - point)
+    return bool(state.failed(between).all())
+
+
+def is_round(state, random, failures):
+    """Whether the failures are those of a sphere: it fails in most directions, as far out as they are."""
+    directions = random.standard_normal((ROUND_LOOKS, state.dimension))
+    radius = np.median(np.linalg.norm(failures, axis=1))
+    points = radius * BETWEEN * directions / np.linalg.norm(directions, axis=1)[:, None]
+    return bool(state.failed(points).mean() > 0.5)
+
+
 def is_continuous(state, regions):
     """Whether the regions are pieces of one curved set: it fails between most neighbours too, a little further out."""
     regions = regions.near()
-    if len(regions.distances) < ENOUGH_TO_JUDGE:
+    if len(regions.distances) < JUDGED_AT[0]:
         return False
     cosines = regions.normals @ regions.normals.T
     np.fill_diagonal(cosines, -1.0)
@@ -230,14 +209,14 @@ def new_failures(state, random, regions, spreads):
     return points[state.failed(points)]
 
 
-def find_regions(state: CountedLimitState, random, failures, log_probability, reserve) -> Regions:
+def find_regions(state: CountedLimitState, random, first: Regions, failures, log_probability, reserve) -> Regions:
     """Regions of failure, until a fresh batch of inflated draws finds nothing new.
 
-    failures : known ones, shape (m, dimension); log_probability : of the pilot, None when it reached no failure
-    reserve : calls to leave for the estimate
+    first : regions known already; failures : shape (m, dimension)
+    log_probability : of the pilot, None when it reached no failure; reserve : calls to leave for the estimate
     Source: inflated spread after C. G. Bucher, Struct. Saf. 31, 504 (2009) (from memory), here for the search alone.
     """
-    regions, continuous = explained_by_walks(state, random, Regions.none(state.dimension), failures, reserve)
+    regions, continuous = explained_by_walks(state, random, first, failures, reserve)
     spreads = np.array(SPREADS) if log_probability is None else distance_of(log_probability) / np.array(DIVISORS)
     complete = False
     while not complete and not continuous and state.left - BATCH * len(spreads) > reserve:
@@ -245,6 +224,8 @@ def find_regions(state: CountedLimitState, random, failures, log_probability, re
         before = len(regions.distances)
         regions, continuous = explained_by_walks(state, random, regions, batch, reserve)
         complete = len(regions.distances) == before
+    hidden = regions.flat and len(regions.distances) > 1 and state.dimension > WALKABLE
+    complete = complete and not regions.lost and not hidden
     return replace(regions.near(), complete=complete, continuous=continuous)
 
 

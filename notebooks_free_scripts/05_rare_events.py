@@ -83,6 +83,22 @@ def yes_or_no(dimension, distance):
     return "yes or no", lambda points: np.where(points @ normal >= distance, -1.0, 1.0), dimension, ndtr(-distance)
 
 
+def corner(count, dimension, probability):
+    """Several half-spaces at right angles that must all be reached."""
+    normals, distance = unit_vectors(count, dimension), -ndtri(probability ** (1 / count))
+    return f"corner of {count}", lambda points: (distance - points @ normals.T).max(axis=1), dimension, probability
+
+
+def sphere_and_plane(dimension, probability):
+    """The sphere in all inputs but the last, the plane in that one; each alone has the probability that is given."""
+    square, distance = stats.chi2.isf(probability, dimension - 1), -ndtri(probability)
+
+    def limit_state(points):
+        return np.minimum(square - (points[:, :-1] ** 2).sum(axis=1), distance - points[:, -1])
+
+    return "sphere and plane", limit_state, dimension, probability * (2 - probability)
+
+
 CASES = [
     linear(2, 3.0),
     linear(10, 4.5),
@@ -99,6 +115,8 @@ CASES = [
     poisson_product(4.0, 12, 6),
     four_branches(),
     yes_or_no(10, 4.75),
+    yes_or_no(100, 4.75),
+    corner(2, 10, 1e-6),
 ]
 
 

@@ -5,33 +5,38 @@ import pytest
 from scipy import stats
 
 from mc.rare_calls import CountedLimitState
+from mc.rare_descent import descent, inflated, mean_beyond
 from mc.rare_diagnostics import effective_sample_size, log_interval, pareto_shape, skewness, tail_shape, variation
-from mc.rare_mixture import WIDE, Mixture, log_normal, refitted, reweighted, second_moment
+from mc.rare_mixture import WIDE, Mixture, further_axes, log_normal, refitted, reweighted, second_moment
 from mc.rare_pilot import annealing, next_threshold, subset_simulation
-from mc.rare_regions import Regions, find_regions
+from mc.rare_regions import Regions, find_regions, is_connected, is_round
+from mc.rare_sampling import Sample, combined
+from mc.rare_walks import plane_at
 
 
 def mixture(dimension=3):
-    """Two components: one narrow along a slanted normal, one alike in all directions."""
+    """Two components: one narrow along a slanted normal and along a second axis, one alike in all directions."""
     normal = np.ones(dimension) / np.sqrt(dimension)
-    return Mixture(
+    ours = Mixture.of(
         weights=np.array([0.7, 0.3]),
         centers=np.array([4 * normal, np.zeros(dimension)]),
         normals=np.array([normal, np.zeros(dimension)]),
         along=np.array([0.3, 1.4]),
         across=np.array([1.2, 1.4]),
     )
+    second = np.eye(dimension)[0] - np.eye(dimension)[1]
+    ours.axes[0, 1], ours.along[0, 1] = second / np.sqrt(2), 0.5
+    return ours
 
 
 def test_density_is_that_of_the_normals_it_is_made_of():
     ours, points = mixture(), np.random.default_rng(0).standard_normal((50, 3)) * 2
     expected = np.zeros(50)
     for k in range(2):
-        normal = np.outer(ours.normals[k], ours.normals[k])
-        for share, along in ((1 - WIDE, ours.along[k]), (WIDE, ours.wide_along[k])):
-            covariance = ours.across[k] ** 2 * (np.eye(3) - normal) + along**2 * normal
-            if not normal.any():
-                covariance = ours.across[k] ** 2 * np.eye(3)
+        for share, along in ((1 - WIDE, ours.along[k]), (WIDE, np.full(3, max(ours.across[k], 1.0)))):
+            covariance = ours.across[k] ** 2 * np.eye(3)
+            for axis, spread in zip(ours.axes[k], along, strict=True):
+                covariance += (spread**2 - ours.across[k] ** 2) * np.outer(axis, axis)
             expected += ours.weights[k] * share * stats.multivariate_normal(ours.centers[k], covariance).pdf(points)
     assert np.exp(ours.log_density(points)) * (2 * np.pi) ** -1.5 == pytest.approx(expected, rel=1e-9, abs=0)
 
@@ -90,6 +95,9 @@ def test_log_interval():
     assert np.log(high / low) == pytest.approx(2 * 1.959964 * np.sqrt(np.log1p(0.01)), rel=1e-5)
     assert log_interval(1e-6, 0.1, 1e9, 0.95, lean=0.5)[1] > high
     assert log_interval(0.9, 1.0, 5, 0.95)[1] == 1.0
+    heavy = log_interval(1e-6, 0.1, 1e9, 0.95, shape=0.5)
+    assert heavy[0] < low and heavy[1] > high
+    assert log_interval(1e-6, 0.1, 1e9, 0.95, shape=-np.inf) == (low, high)
 
 
 def test_thresholds_step_over_plateaus():
@@ -126,7 +134,7 @@ def test_search_finds_every_region_and_its_distance():
     normals = np.linalg.qr(np.random.default_rng(5).standard_normal((15, 15)))[0][:7]
     distances, units = np.linspace(4.5, 5, 7), 10.0 ** np.arange(-3, 4)
     state = CountedLimitState(lambda points: ((distances - points @ normals.T) * units).min(axis=1), 15, 50_000)
-    regions = find_regions(state, np.random.default_rng(0), np.empty((0, 15)), np.log(1e-5), 10_000)
+    regions = find_regions(state, np.random.default_rng(0), Regions.none(15), np.empty((0, 15)), np.log(1e-5), 10_000)
     assert regions.complete and not regions.continuous
     cosines = normals @ regions.normals.T
     assert cosines.max(axis=1).min() > 0.97
@@ -135,7 +143,8 @@ def test_search_finds_every_region_and_its_distance():
 
 def test_a_sphere_is_one_curved_set():
     state = CountedLimitState(lambda points: 40 - (points**2).sum(axis=1), 6, 50_000)
-    assert find_regions(state, np.random.default_rng(0), np.empty((0, 6)), np.log(1e-6), 10_000).continuous
+    none = Regions.none(6)
+    assert find_regions(state, np.random.default_rng(0), none, np.empty((0, 6)), np.log(1e-6), 10_000).continuous
 
 
 def test_regions_explain_what_they_hold():
@@ -145,3 +154,78 @@ def test_regions_explain_what_they_hold():
     assert regions.explain(points).tolist() == [True, True, False]
     assert regions.knows(np.array([5.0, 0.1])) and not regions.knows(np.array([0.0, 5.0]))
     assert regions.matters(np.array([5.0, 0.0])) and not regions.matters(np.array([9.0, 0.0]))
+
+
+def yes_or_no(normal, distance):
+    """A limit state that tells no more than whether a half-space is reached."""
+    return lambda points: np.where(points @ normal >= distance, -1.0, 1.0)
+
+
+@pytest.mark.parametrize("dimension", [5, 30, 100])
+def test_descent_finds_a_direction_by_yes_or_no_alone(dimension):
+    """To within the sideways error of one sigma at the distance that it promises, and half as much again."""
+    normal = np.ones(dimension) / np.sqrt(dimension)
+    state, random = CountedLimitState(yes_or_no(normal, 4.75), dimension, 20_000), np.random.default_rng(0)
+    failures, spread = inflated(state, random)
+    found = descent(state, random, failures, spread)
+    assert found.compact
+    assert np.arccos(found.normal @ normal) * 4.75 < 1.5
+    assert found.distance == pytest.approx(4.75, abs=0.4)
+    assert state.calls < 6000
+
+
+def test_descent_outside_of_known_regions_finds_the_other_or_nothing():
+    def limit_state(points):
+        return np.where(np.abs(points[:, 0]) >= 4.75, -1.0, 1.0)
+
+    known = Regions.none(6).joined_by(np.array([4.75, 0, 0, 0, 0, 0]))
+    state, random = CountedLimitState(limit_state, 6, 20_000), np.random.default_rng(1)
+    start = np.array([[-6.0, 1.0, -1.0, 0.5, 2.0, 0.0]])
+    assert descent(state, random, start, 2.5, known_regions=known).normal[0] < -0.9
+    assert descent(state, random, start, 2.5, known_regions=known.joined_by(-known.normals[0] * 4.75)) is None
+
+
+def test_mean_beyond_a_distance():
+    assert mean_beyond(4.0) == pytest.approx(stats.truncnorm.mean(4.0, np.inf), rel=1e-6)
+    assert mean_beyond(0.0) == pytest.approx(np.sqrt(2 / np.pi))
+
+
+def test_connected_round_and_plane():
+    random, plane = np.random.default_rng(2), CountedLimitState(lambda points: 4 - points[:, 0], 5, 10_000)
+    region = Regions.none(5).joined_by(np.array([4.0, 0, 0, 0, 0]))
+    assert is_connected(plane, region, np.array([5.0, 3.0, 0, 0, 0]))
+    found, ragged = plane_at(plane, random, np.array([5.0, 3.0, 0, 0, 0]))
+    assert not ragged and found == pytest.approx([4.0, 0, 0, 0, 0], abs=0.2)
+    both = CountedLimitState(lambda points: 4 - np.abs(points[:, 0]), 5, 10_000)
+    assert not is_connected(both, region, np.array([-5.0, 3.0, 0, 0, 0]))
+    sphere = CountedLimitState(lambda points: 40 - (points**2).sum(axis=1), 5, 10_000)
+    assert is_round(sphere, random, np.full((1, 5), 3.0)) and not is_round(plane, random, np.full((1, 5), 3.0))
+
+
+def test_further_axes_are_those_that_chance_does_not_explain():
+    random, normal = np.random.default_rng(3), np.eye(6)[0]
+    points = random.standard_normal((400, 6))
+    assert not len(further_axes(points.T @ points / 400, normal, 400, 3)[0])
+    points[:, 2] *= 0.2
+    axes, variances = further_axes(points.T @ points / 400, normal, 400, 3)
+    assert len(axes) == 1 and abs(axes[0, 2]) > 0.99
+    assert variances[0] == pytest.approx(0.04, rel=0.6)
+    assert not len(further_axes(points.T @ points / 400, normal, 8, 3)[0])  # eight points tell nothing
+
+
+def test_combined_samples_are_one_sample_of_both_mixtures():
+    state, random = CountedLimitState(lambda points: 4 - points[:, 0], 3, 100_000), np.random.default_rng(4)
+    finals = [Sample.drawn(state, random, Mixture.single(np.array([at, 0, 0])), 4000) for at in (3.0, 4.5)]
+    whole = combined(finals)
+    assert whole.weights.size == 8000
+    assert whole.weights.mean() == pytest.approx(stats.norm.sf(4), abs=4 * variation(whole.weights) * stats.norm.sf(4))
+    assert variation(whole.weights) < variation(finals[0].weights)
+
+
+def test_mirror_images_of_regions_are_found_with_two_calls_each():
+    normals = np.linalg.qr(np.random.default_rng(5).standard_normal((20, 20)))[0][:5]
+    state = CountedLimitState(lambda points: 4.5 - np.abs(points @ normals.T).max(axis=1), 20, 50_000)
+    none = Regions.none(20)
+    regions = find_regions(state, np.random.default_rng(0), none, np.empty((0, 20)), np.log(1e-5), 10_000)
+    assert regions.complete and len(regions.distances) == 10
+    assert state.calls < 2500
