@@ -13,6 +13,7 @@ from mc.streams import Streams
 from mc.tally import Grid, Moments, Tally
 
 SLICE = 8192  # samples evaluated at once: a dozen arrays of this length stay in a core's cache
+NAMED = 3  # inputs that are named when an output is not finite
 PILOT = 4096  # samples that center and scale the tallies
 
 Model = Callable[[Mapping[str, np.ndarray]], Any]
@@ -91,8 +92,21 @@ class Experiment:
         return cls(model=model, inputs=inputs, grid=Grid.from_pilot(_outputs(model, draws)), tally=tally)
 
     def __call__(self, block: Block) -> Moments:
-        """Tally of one block. Raises FloatingPointError when an output is not finite."""
-        return self.tally.of(self.grid, self._evaluated(block))
+        """Tally of one block. Raises FloatingPointError that names the inputs when an output is not finite."""
+        try:
+            return self.tally.of(self.grid, self._evaluated(block))
+        except FloatingPointError as error:
+            raise FloatingPointError(f"{error}{self._culprit(block)}") from None
+
+    def _culprit(self, block) -> str:
+        """The inputs furthest out at the first sample whose outputs are not finite."""
+        for draws in self.inputs.slices(block):
+            bad = np.flatnonzero(~np.isfinite(_outputs(self.model, draws)).all(axis=0))
+            if bad.size:
+                at = {name: float(values[bad[0]]) for name, values in draws.items()}
+                furthest = sorted(at, key=lambda name: -abs(at[name]))[:NAMED]
+                return " at " + ", ".join(f"{name} = {at[name]:+.2f} sigma" for name in furthest)
+        return ""
 
     def _evaluated(self, block):
         for draws in self.inputs.slices(block):

@@ -5,9 +5,11 @@ from dataclasses import dataclass, replace
 import numpy as np
 from scipy import stats
 
+from mc.codec import storable
 from mc.tally import Moments
 
 
+@storable
 @dataclass(frozen=True, kw_only=True)
 class Estimate:
     """A number with its confidence interval.

@@ -1,5 +1,6 @@
 """What is to be computed: how many samples, in which blocks. Where it runs is the runner's business."""
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from math import ceil
 from typing import NamedTuple
@@ -33,10 +34,14 @@ class Plan:
         if self.precision is not None and not self.precision > 0:
             raise ValueError("precision must be above 0")
 
-    def blocks(self, first_sample: int, samples: int) -> list[Block]:
-        """Blocks that hold the samples from `first_sample` (a multiple of block_size) up to `samples`."""
-        starts = range(first_sample, samples, self.block_size)
-        return [Block(start // self.block_size, min(self.block_size, samples - start)) for start in starts]
+    def blocks(self, first_sample: int, samples: int) -> Iterator[Block]:
+        """Blocks that hold the samples from `first_sample` (a multiple of block_size) up to `samples`, one at a time."""
+        for start in range(first_sample, samples, self.block_size):
+            yield Block(start // self.block_size, min(self.block_size, samples - start))
+
+    def count(self, first_sample: int, samples: int) -> int:
+        """How many `blocks` gives."""
+        return len(range(first_sample, samples, self.block_size))
 
     def first_target(self) -> int:
         """Samples of the first round: everything, or the pilot of a precision-driven run."""

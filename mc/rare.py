@@ -11,6 +11,7 @@ from math import ceil
 import numpy as np
 from scipy.special import ndtr
 
+from mc.codec import storable
 from mc.intervals import fraction_exact
 from mc.rare_calls import CountedLimitState
 from mc.rare_diagnostics import UNRELIABLE_SHAPE, effective_sample_size, log_interval, skewness, variation
@@ -39,6 +40,7 @@ UNCHECKED = "a curved failure set was not checked by a second pilot: the calls d
 BELOW_PILOT = "well below the pilot's estimate: a failure region may be missing"
 
 
+@storable
 @dataclass(frozen=True, kw_only=True)
 class RareEstimate:
     """A failure probability and how well it is known.

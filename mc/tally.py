@@ -9,11 +9,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from mc.codec import storable
+
 CELLS_PER_SIGMA = 128
 REACH = 16  # sigmas on either side
 CELLS = 2 * REACH * CELLS_PER_SIGMA
 
 
+@storable
 @dataclass(frozen=True, kw_only=True, eq=False)
 class Grid:
     """Where each output's tally is centered and how it is scaled.
@@ -38,6 +41,7 @@ class Grid:
         return cls(center=center, scale=np.where(spread > least, spread, np.where(least > 0, least, 1.0)))
 
 
+@storable
 @dataclass(frozen=True, kw_only=True, eq=False)
 class Moments:
     """Power sums over samples of every output.
@@ -97,6 +101,7 @@ class Moments:
         return self.grid.center + scale * first, scale**2 * variance, scale**3 * skewed, scale**4 * peaked
 
 
+@storable
 @dataclass(frozen=True, kw_only=True, eq=False)
 class Tally(Moments):
     """Moments with a histogram and the extremes, so that quantiles can be read.

@@ -7,6 +7,7 @@ Run: python notebooks_free_scripts/04_speed.py            (about two minutes)
 import math
 import subprocess
 import sys
+from dataclasses import replace
 from importlib.resources import files
 from pathlib import Path
 from runpy import run_path
@@ -30,9 +31,9 @@ PROCESS = load_process(files("studies.examples") / "option_a.toml")
 WIDTH, LENGTH = 0.2, 0.13
 
 
-def experiment(widths=(WIDTH,)):
+def experiment(widths=(WIDTH,), process=PROCESS):
     """The spread study's own experiment: all causes, the asked widths."""
-    population = Population(PROCESS, "n")
+    population = Population(process, "n")
     names = tuple(item.name for item in population.inputs if item.cause not in spread.WITHOUT_EFFECT)
     model = spread.Thresholds(
         population=population,
@@ -148,6 +149,19 @@ def two_workers():
     print(f"two workers against one: {times['one'] / times['two']:.2f} times faster")
 
 
+def solved_edges():
+    device = PROCESS.process.device["n"]
+    device = device.model_copy(update={"edge": device.edge.model_copy(update={"method": "solved"})})
+    changed = PROCESS.process.model_copy(update={"device": PROCESS.process.device | {"n": device}})
+    started, block = perf_counter(), Block(0, 65536)
+    Population(replace(PROCESS, process=changed), "n")
+    print(f"a table of solved edges, or reading it from the cache: {perf_counter() - started:.1f} s")
+    for widths in ((WIDTH,), np.geomspace(0.12, 2, 11)):
+        closed, solved = experiment(widths), experiment(widths, replace(PROCESS, process=changed))
+        times = side_by_side(2 if SHORT else 15, closed=lambda: closed(block), solved=lambda: solved(block))  # noqa: B023
+        print(f"solved edges, {len(widths)} widths: {times['solved'] / times['closed']:.2f} times closed forms")
+
+
 def conditioning():
     script = run_path(str(Path(__file__).with_name("03_every_device_of_every_chip.py")))
     question = timing.Question(
@@ -192,6 +206,7 @@ if __name__ == "__main__":
     against_the_floor()
     against_other_ways()
     two_workers()
+    solved_edges()
     saving = conditioning()
     growth = peak_memory()
     # times are noisy and asserted nowhere; counts and memory are not

@@ -7,6 +7,7 @@ width the same draw. Random draws are made elsewhere; here is only the function.
 """
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from scipy.optimize import brentq
@@ -191,3 +192,17 @@ class CountedLaw:
         slope += self.slope.take(cell, mode="clip")
         slope *= distance
         return slope + center
+
+
+@lru_cache(maxsize=256)
+def layered_law(mean_count, surface_ratio, depth_ratio, fringe_ratio):
+    """The law of a layered profile, kept: building it costs as much as some hundred thousand thresholds.
+
+    mean_count : see `CountedLaw.build` [1]
+    surface_ratio, depth_ratio, fringe_ratio : see `layered_weight_density` [1]
+    Returns a CountedLaw.
+    Source: as in `CountedLaw.build`.
+    """
+    return CountedLaw.build(
+        mean_count, lambda weight: layered_weight_density(weight, surface_ratio, depth_ratio, fringe_ratio)
+    )

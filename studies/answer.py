@@ -7,6 +7,7 @@ import pandas as pd
 
 from mc.intervals import Estimate
 from mc.plan import Plan
+from studies.numbers import Number
 from studies.settings import Settings
 from studies.validated import Record
 
@@ -22,6 +23,8 @@ class Answer:
     question : the question as it was asked, plain values
     table : tidy table, one row per width; every number's interval beside it
     tables : further tidy tables by name
+    drawn : arrays that only the figure shows, by name
+    numbers : what can be compared with another process option's answer
     headlines : estimates by name, units at the end of the names
     sentences : the answer in words
     notes : approximations used and warnings, in words
@@ -45,6 +48,8 @@ class Answer:
     seconds: float
     met: bool = True
     tables: Mapping[str, pd.DataFrame] = field(default_factory=dict)
+    numbers: tuple[Number, ...] = ()
+    drawn: Mapping[str, object] = field(default_factory=dict)
 
 
 def columns_of(name: str, estimate: Estimate, unit: str = "") -> dict[str, float]:

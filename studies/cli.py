@@ -5,11 +5,12 @@ import json
 import os
 import re
 import sys
+from contextlib import nullcontext
 from pathlib import Path
 
 from studies import __version__
 from studies.errors import InputError, nearest, one_line
-from studies.questions import SUMMARIES, question_module
+from studies.questions import COMPARABLE, SUMMARIES, question_module
 
 DONE, NOT_MET, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -49,6 +50,7 @@ def _overview() -> Parser:
     commands.add_argument("new", nargs="?", help="write the demo: two process options and a job, into a folder")
     commands.add_argument("keys", nargs="?", help="tell every key of a process file, its range and its meaning")
     commands.add_argument("run", nargs="?", help="answer every question of a job file")
+    commands.add_argument("compare", nargs="?", help="ask two process options the same question: what differs, and why")
     for kind, summary in SUMMARIES.items():
         commands.add_argument(kind, nargs="?", help=summary)
     return parser
@@ -57,6 +59,9 @@ def _overview() -> Parser:
 def _workers(parser) -> None:
     parser.add_argument("--jobs", type=int, default=_all_cores(), metavar="N", help="workers (default: all cores)")
     parser.add_argument("--backend", default="loky", help="joblib backend: loky, threading or multiprocessing")
+    parser.add_argument(
+        "--cluster", metavar="WHERE", help="scheduler of a cluster: tcp://host:port, or its scheduler file"
+    )
     parser.add_argument("--out", type=Path, metavar="DIR", help="folder for tables, figures, answers and record")
     parser.add_argument("--replace", action="store_true", help="overwrite another job's results in that folder")
     parser.add_argument("--json", action="store_true", help="print the answers as JSON instead of tables")
@@ -113,13 +118,14 @@ def _run(arguments) -> int:
 
     parser = Parser(prog="widthwise run", description="Answer every question of a job file.", allow_abbrev=False)
     parser.add_argument("job", type=Path, metavar="JOB.toml")
+    parser.add_argument("--allow-outside", action="store_true", help="read process files outside the job's folder")
     _field_flags(parser, Settings)
     _workers(parser)
     given = vars(parser.parse_args(arguments))
     from studies.job import load_job
 
     overrides = {name: given[name] for name in Settings.model_fields if name in given}
-    return _answer(load_job(given["job"], overrides), given)
+    return _answer(load_job(given["job"], overrides, given["allow_outside"]), given)
 
 
 def _ask(kind: str, arguments) -> int:
@@ -140,23 +146,54 @@ def _ask(kind: str, arguments) -> int:
     return _answer(single_question(kind, given["process"], question, settings), given)
 
 
-def _answer(job, given) -> int:
+def _compare(arguments) -> int:
+    from studies.settings import Settings
+    from studies.validated import keys_of
+
+    which = Parser(prog="widthwise compare", add_help=False, allow_abbrev=False)
+    which.add_argument("--question", choices=list(COMPARABLE))
+    kind = which.parse_known_args(arguments)[0].question
+    description = "Ask two process options the same question on the same random numbers: what differs, and why."
+    parser = Parser(prog="widthwise compare", description=description, allow_abbrev=False)
+    parser.add_argument("first", type=Path, metavar="A.toml")
+    parser.add_argument("second", type=Path, metavar="B.toml")
+    parser.add_argument("--question", choices=list(COMPARABLE), required=True, help="what to ask; its own flags follow")
+    model = question_module(kind).Question if kind else None
+    for fields in (model, Settings):
+        if fields is not None:
+            _field_flags(parser, fields)
+    _workers(parser)
+    given = vars(parser.parse_args(arguments))
+    from studies.job import comparison
+
+    question = {name: given[name] for name in keys_of(model) if name in given}
+    settings = {name: given[name] for name in Settings.model_fields if name in given}
+    return _answer(comparison(kind, (given["first"], given["second"]), question, settings), given, shown="compare")
+
+
+def _answer(job, given, shown: str | None = None) -> int:
+    """Answer a job; `shown` : the kind of answer to print, all when None."""
     from studies import record, terminal
+    from studies.cluster import crew
+    from studies.keeping import open_ledger
     from studies.settings import Workers
     from studies.validated import validated
 
     workers = validated(Workers, {"jobs": given["jobs"], "backend": given["backend"]}, "command line")
-    job.check()
+    with crew(workers, given["cluster"]) as place:
+        with terminal.waiting("checking the questions; edges are solved once and then kept"):
+            job.check()
+        if given["out"]:
+            record.check_folder(given["out"], job, given["replace"])
+        kept = open_ledger(given["out"], job, given["replace"]) if given["out"] else nullcontext()
+        with kept as ledger, terminal.progress_bar(len(job.asked)) as start:
+            answers = job.answers(place, start, ledger)
     if given["out"]:
-        record.check_folder(given["out"], job, given["replace"])
-    with terminal.progress_bar(len(job.asked)) as start:
-        answers = job.answers(workers, start)
-    if given["out"]:
-        record.write(given["out"], job, answers, workers)
+        record.write(given["out"], job, answers, place)
     if given["json"]:
         print(json.dumps(record.answers_json(job, answers), indent=2))
     else:
-        terminal.show(answers, terminal.console())
+        terminal.show([answer for answer in answers if shown in (None, answer.kind)], terminal.console())
     if given["out"]:
         print(f"Written to {one_line(given['out'])}", file=sys.stderr)
     return DONE if all(answer.met for answer in answers) else NOT_MET
@@ -176,7 +213,8 @@ def main(arguments=None) -> int:
         print(error, file=sys.stderr)
         return BAD_INPUT
     except KeyboardInterrupt:
-        print("stopped; nothing was written", file=sys.stderr)
+        kept = "the same command goes on from here" if "--out" in arguments else "nothing was written"
+        print(f"stopped; {kept}", file=sys.stderr)
         return INTERRUPTED
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())  # so that leaving does not try again
@@ -204,10 +242,12 @@ def _command(arguments) -> int:
         return _keys(rest)
     if command == "run":
         return _run(rest)
+    if command == "compare":
+        return _compare(rest)
     if command in SUMMARIES:
         return _ask(command, rest)
     raise InputError(
-        f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'keys', 'run', *SUMMARIES])}"
+        f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'keys', 'run', 'compare', *SUMMARIES])}"
     )
 
 

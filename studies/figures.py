@@ -1,8 +1,10 @@
-"""Figures. A function takes an Axes, draws, and returns it.
+"""Figures, one a kind of question.
 
-Spread of transistors is a filled band or a bar; uncertainty of a number is a thin line with caps. The legends say which.
+A drawer makes an answer's figure and says its title; kinds without a drawer have no figure.
 """
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from io import BytesIO
 from typing import Any
 
@@ -13,185 +15,53 @@ matplotlib.use("Agg")
 import matplotlib.pyplot as plt
 import numpy as np
 import seaborn as sns
-from matplotlib.ticker import FuncFormatter, NullFormatter
 
 from studies.answer import Answer
+from studies.atoms_figure import draw_atoms
+from studies.compare_curves import difference_against_width, shares_of_change
+from studies.edge_figure import draw_edge
 from studies.errors import inert
-from studies.job import Job
-from studies.variation import CAUSES
-
-PALETTE = sns.color_palette("colorblind", 10)
-SPREAD, NUMBER, REFERENCE = PALETTE[0], "black", PALETTE[1]
-SHOWN = ("dopants", "remainder", "doping", "oxide_thickness", "length", "width", "oxide_roughness", "gate_edges")
-SHOWN += (
-    "active_edges",
-    "grains",
-    *(cause for cause in CAUSES if cause in ("flat_band", "mobility", "current_factor")),
+from studies.figure_curves import (
+    chip_yield_against_width,
+    error_against_width,
+    failures_against_width,
+    good_chips_against_width,
+    period_against_width,
+    shares_against_width,
+    sigma_against_width,
+    threshold_against_width,
+    working_chips_against_width,
+    yield_against_width,
 )
-HATCHES = ["", "//", "..", "\\\\", "xx", "--", "++", "oo", "**", "||"]
+from studies.job import Asked, Job
+from studies.palette import INK
 
-
-def width_axis(axes, widths):
-    """Logarithmic width axis with the asked widths as ticks, thinned where they would touch."""
-    axes.set_xscale("log")
-    widths = [float(f"{width:.3g}") for width in widths]
-    apart = (widths[-1] / widths[0]) ** 0.12  # labels need about an eighth of the axis
-    ticks = widths[:1]
-    for width in widths:
-        if width > apart * ticks[-1]:
-            ticks.append(width)
-    axes.set_xticks(ticks)
-    axes.xaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
-    axes.xaxis.set_minor_formatter(NullFormatter())
-    axes.minorticks_off()
-    axes.set_xlabel("drawn width (um)")
-    return axes
-
-
-def plain_log_axis(axes):
-    """Logarithmic vertical axis with plain numbers at 1, 2, 3 and 5; linear when all that is drawn is zero."""
-    if all(np.max(line.get_ydata(), initial=0) <= 0 for line in axes.get_lines()):
-        return axes
-    axes.set_yscale("log")
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
-    axes.yaxis.set_minor_formatter(FuncFormatter(lambda value, _: f"{value:g}" if f"{value:e}"[0] in "235" else ""))
-    return axes
-
-
-def with_interval(axes, table, name: str, unit: str, *, label: str, color=NUMBER, scale=1.0, marker="o"):
-    """A curve of a number against width with its 95 % interval as caps."""
-    value, low, high = (table[f"{name}{part}{unit}"] * scale for part in ("", "_low", "_high"))
-    finite = np.isfinite(low) & np.isfinite(high)
-    bars = [np.where(finite, value - low, 0), np.where(finite, high - value, 0)]
-    axes.errorbar(table.width_um, value, yerr=bars, color=color, marker=marker, ms=4, lw=1.2, capsize=4, label=label)
-    return axes
-
-
-def threshold_against_width(axes, table):
-    """Mean threshold, the band that holds 99.8 % of transistors, and the nominal curves."""
-    axes.fill_between(
-        table.width_um,
-        1e3 * table.vth_p0_1_v,
-        1e3 * table.vth_p99_9_v,
-        color=SPREAD,
-        alpha=0.25,
-        lw=0,
-        label="spread: 99.8 % of transistors",
-    )
-    with_interval(axes, table, "vth_mean", "_v", label="mean, 95 % interval", scale=1e3)
-    axes.plot(
-        table.width_um,
-        1e3 * table.vth_nominal_without_edges_v,
-        color=REFERENCE,
-        ls="--",
-        label="nominal without edges",
-    )
-    width_axis(axes, table.width_um)
-    axes.set_ylabel("threshold voltage (mV)")
-    axes.legend(frameon=False)
-    return axes
-
-
-def sigma_against_width(axes, table):
-    """Sigma of all transistors and of neighbours, and the straight 1/sqrt(W L) line."""
-    with_interval(axes, table, "vth_sigma", "_mv", label="all transistors, 95 % interval")
-    if "vth_device_sigma_mv" in table:
-        with_interval(
-            axes, table, "vth_device_sigma", "_mv", label="neighbours, 95 % interval", color=SPREAD, marker="s"
-        )
-        axes.plot(
-            table.width_um,
-            table.vth_device_sigma_area_law_mv,
-            color=REFERENCE,
-            ls="--",
-            zorder=5,
-            label="1/sqrt(electrical W L) from the widest",
-        )
-    width_axis(axes, table.width_um)
-    plain_log_axis(axes)
-    axes.set_ylabel("sigma of the threshold (mV)")
-    axes.set_ylim(bottom=0.45 * axes.get_ylim()[0])  # room for the legend below falling curves
-    axes.legend(frameon=False, loc="lower left", fontsize="small")
-    return axes
-
-
-def shares_against_width(axes, shares, causes):
-    """Stacked shares of the variance; causes below 2 % everywhere are gathered."""
-    wide = shares[shares.part.isin(causes)].pivot(index="width_um", columns="part", values="share")
-    small = [part for part in wide if wide[part].max() < 0.02]
-    order = [cause for cause in SHOWN if cause in wide and cause not in small]
-    stack = wide[list(order)].copy()
-    if small:
-        stack["others"] = wide[small].sum(axis=1)
-    places, bottom = np.arange(len(stack)), np.zeros(len(stack))
-    for part in stack:
-        axes.bar(
-            places,
-            100 * stack[part],
-            bottom=bottom,
-            width=0.8,
-            color=_cause_color(part),
-            hatch=HATCHES[SHOWN.index(part) % 10] if part in SHOWN else "",
-            edgecolor="white",
-            lw=0.4,
-            label=part.replace("_", " "),
-        )
-        bottom += 100 * stack[part].to_numpy()
-    axes.set_xticks(places, [f"{width:g}" for width in stack.index], rotation=90 if len(places) > 7 else 0)
-    axes.set_xlabel("drawn width (um)")
-    axes.set_ylabel("share of the variance (%)")
-    axes.axhline(100, color="black", lw=0.8)
-    handles, labels = axes.get_legend_handles_labels()
-    axes.legend(handles[::-1], labels[::-1], frameon=False, bbox_to_anchor=(1.0, 1.0), loc="upper left")
-    return axes
-
-
-def _cause_color(part: str):
-    """The same colour for a cause in every figure; grey for what is gathered."""
-    return PALETTE[SHOWN.index(part) % 10] if part in SHOWN else "0.7"
-
-
-def yield_against_width(axes, table, target: float):
-    """Timing yield at the period with its interval, and the target."""
-    with_interval(axes, table, "yield", "", label="timing yield, 95 % interval", scale=100)
-    target = 100 * target
-    axes.axhline(target, color=REFERENCE, ls="--", label=f"target {target:g} %")
-    width_axis(axes, table.width_um)
-    axes.set_ylabel(f"chips within {table.period_ps.iloc[0]:g} ps (%)")
-    axes.legend(frameon=False)
-    return axes
-
-
-def period_against_width(axes, table, target: float):
-    """Slowest path of the chips, and the period that meets the target."""
-    mean, sigma = table.slowest_mean_ps, table.slowest_sigma_ps
-    axes.fill_between(
-        table.width_um,
-        mean - sigma,
-        mean + sigma,
-        color=SPREAD,
-        alpha=0.25,
-        lw=0,
-        label="spread: slowest path, one sigma",
-    )
-    target = 100 * target
-    with_interval(axes, table, "period_at_target", "_ps", label=f"period for {target:g} %, 95 % interval")
-    axes.axhline(table.period_ps.iloc[0], color=REFERENCE, ls="--", label="period asked for")
-    width_axis(axes, table.width_um)
-    axes.set_ylabel("period (ps)")
-    axes.legend(frameon=False)
-    return axes
+DRAWING = {
+    "svg.hashsalt": "widthwise",  # fixed, and no date, so that the same answers give the same bytes
+    "svg.fonttype": "none",
+    "hatch.linewidth": 0.5,
+} | {f"{what}color": INK for what in ("text.", "axes.edge", "axes.label", "xtick.", "ytick.")}
+CONDITIONS = {  # key of a question: how a figure's title states it
+    "supply_v": "supply {:g} V",
+    "drain_v": "drain {:g} V",
+    "body_bias_v": "body bias {:g} V",
+    "gm_over_i_per_v": "gm/I {:g} per V",
+    "drain_current_ua": "{:g} µA",
+    "current_per_square_ua": "{:g} µA per square",
+    "charge_level": "criterion {:g} C_ox kT/q",
+    "mesh_nm": "boxes of {:g} nm",
+}
 
 
 def _draw_spread(answer: Answer):
-    figure, axes = plt.subplots(1, 3, figsize=(15, 4.6), width_ratios=(1, 1, 0.9))
+    figure, axes = plt.subplots(1, 3, figsize=(15, 5.2), width_ratios=(1, 1, 0.9))
     threshold_against_width(axes[0], answer.table)
     sigma_against_width(axes[1], answer.table)
     shares = answer.tables["spread_shares"]
     causes = [part for part in shares.part.unique() if not part.startswith("level_")]
     shares_against_width(axes[2], shares, causes)
     question = answer.question
-    return figure, f"{answer.process}, device {question['device']}, L = {question['length_um']:g} um"
+    return figure, f"{answer.process}, device {question['device']}, L = {question['length_um']:g} µm"
 
 
 def _draw_timing(answer: Answer):
@@ -199,36 +69,8 @@ def _draw_timing(answer: Answer):
     question = answer.question
     yield_against_width(axes[0], answer.table, question["yield"])
     period_against_width(axes[1], answer.table, question["yield"])
-    return figure, f"{answer.process}: {question['paths']} paths of {question['stages']} stages"
-
-
-def error_against_width(axes, curve, error: str, unit: str):
-    """Sigma of the pairs' error, and the straight 1/sqrt(W L) line laid from the widest device."""
-    with_interval(axes, curve, f"{error}_sigma", f"_{unit}", label="drawn pairs, 95 % interval")
-    widest = curve.iloc[-1]
-    line = widest[f"{error}_sigma_{unit}"] * np.sqrt(widest.electrical_width_um / curve.electrical_width_um)
-    axes.plot(curve.width_um, line, color=REFERENCE, ls="--", zorder=5, label="1/sqrt(electrical W L) from the widest")
-    width_axis(axes, curve.width_um)
-    plain_log_axis(axes)
-    axes.set_ylabel(f"{error} sigma ({'mV' if unit == 'mv' else '%'})")
-    axes.legend(frameon=False)
-    return axes
-
-
-def chip_yield_against_width(axes, curve, target: float):
-    """Share of chips whose pairs are all inside, with the target and the answer marked."""
-    with_interval(axes, curve, "chip_yield", "", label="chips inside, 95 % interval", scale=100)
-    axes.axhline(100 * target, color=REFERENCE, ls="--", label=f"target {100 * target:g} %")
-    for row in curve[curve.is_minimum].itertuples():
-        axes.axvline(row.width_um, color=SPREAD, lw=1)
-        axes.annotate(
-            f"W = {row.width_um:g} um", (row.width_um, 4), xytext=(5, 0), textcoords="offset points", color=SPREAD
-        )
-    width_axis(axes, curve.width_um)
-    axes.set_ylim(-2, 104)
-    axes.set_ylabel("chips with all pairs inside (%)")
-    axes.legend(frameon=False)
-    return axes
+    size = f"{question['paths']} paths of {question['stages']} stages, L = {question['length_um']:g} µm"
+    return figure, f"{answer.process}: {size}"
 
 
 def _draw_pair(answer: Answer):
@@ -239,69 +81,100 @@ def _draw_pair(answer: Answer):
     figure, axes = plt.subplots(1, 2, figsize=(11, 4.6))
     error_against_width(axes[0], curve, error, unit)
     chip_yield_against_width(axes[1], curve, question["yield"])
-    return figure, f"{answer.process}: {question['kind']}, L = {shown:g} um, {question['pairs']} pairs a chip"
-
-
-def failures_against_width(axes, table):
-    """Failure share on a scale of normal scores: the estimator's interval, and counted points where counting can."""
-    with_interval(axes, table, "device_failure", "", label="estimator, 95 % interval")
-    reasons = [
-        name.removeprefix("failure_") for name in table if name.startswith("failure_") and "_low" not in name[-4:]
-    ]
-    for number, reason in enumerate(name for name in reasons if not name.endswith("high") or name == "vth_high"):
-        line = ("--", ":", "-.", (0, (1, 3)))[number % 4]
-        axes.plot(table.width_um, table[f"failure_{reason}"], ls=line, color=PALETTE[number + 1], label=reason)
-    seen = table[table.counted_failure > 2e-5]
-    if len(seen):
-        axes.plot(seen.width_um, seen.counted_failure, "o", ms=9, mfc="none", color=SPREAD, label="counted")
-    width_axis(axes, table.width_um)
-    axes.set_yscale("log")
-    axes.set_ylabel("share of devices outside their limits")
-    axes.legend(frameon=False)
-    return axes
-
-
-def good_chips_against_width(axes, table):
-    """Chip yield, and good chips per wafer area on a second axis."""
-    with_interval(axes, table, "chip_yield", "", label="chips working, 95 % interval", scale=100)
-    axes.set_ylabel("chips working (%)")
-    width_axis(axes, table.width_um)
-    other = axes.twinx()
-    with_interval(
-        other, table, "good_chips", "_per_cm2", label="good chips, 95 % interval", color=REFERENCE, marker="s"
-    )
-    other.set_ylabel("good chips per cm2 (squares)")
-    axes.legend(frameon=False, loc="center right")
-    other.legend(frameon=False, loc="lower right")
-    return axes
+    return figure, f"{answer.process}: {question['kind']}, L = {shown:g} µm, {question['pairs']} pairs a chip"
 
 
 def _draw_loss(answer: Answer):
-    figure, axes = plt.subplots(1, 2, figsize=(12, 4.6))
+    figure, axes = plt.subplots(1, 3, figsize=(15.5, 4.6))
     failures_against_width(axes[0], answer.table)
-    good_chips_against_width(axes[1], answer.table)
+    working_chips_against_width(axes[1], answer.table)
+    good_chips_against_width(axes[2], answer.table)
     question = answer.question
-    return figure, f"{answer.process}, device {question['device']}: {question['devices']} devices a chip"
+    where = f"device {question['device']}, L = {question['length_um']:g} µm, {question['devices']} devices a chip"
+    return figure, f"{answer.process}, {where}"
 
 
-DRAWERS: dict[str, Any] = {"loss": _draw_loss, "spread": _draw_spread, "timing": _draw_timing, "pair": _draw_pair}
+def _draw_compare(answer: Answer):
+    """The deciding curve's difference where there is one, and what makes the threshold's mean and variance differ."""
+    question = answer.question
+    names = tuple(answer.table[["first", "second"]].iloc[0])
+    curve = answer.table[(answer.table.quantity == question["curve"]) & np.isfinite(answer.table.difference)]
+    shares = answer.tables.get("compare_shares")
+    panels = int(len(curve) > 0) + 2 * int(shares is not None)
+    figure, axes = plt.subplots(1, max(panels, 1), figsize=(2 + 4.7 * max(panels, 1), 4.6), squeeze=False)
+    axes = list(axes[0])
+    if len(curve):
+        difference_against_width(axes.pop(0), curve, names)
+    if shares is not None:
+        shares_of_change(axes[0], shares, "vth_mean{}_mv", "change of the mean threshold (mV)")
+        shares_of_change(axes[1], shares, "vth_variance{}_mv2", "change of the threshold's variance (mV²)")
+    return figure, f"{question['question']}: from {names[0]} to {names[1]}, device {question['device']}"
+
+
+DRAWERS: dict[str, Any] = {
+    "atoms": draw_atoms,
+    "compare": _draw_compare,
+    "edge": draw_edge,
+    "loss": _draw_loss,
+    "spread": _draw_spread,
+    "timing": _draw_timing,
+    "pair": _draw_pair,
+}
+
+
+def conditions(asked: Asked, question) -> str:
+    """Temperature, bias and supply of a question, for a figure's title."""
+    temperature = question.get("temperature_c")
+    if temperature is None:
+        temperature = asked.file.process.temperature_c
+    said = [f"{temperature:g} °C"]
+    for key, words in CONDITIONS.items():
+        value = question.get(key)
+        if isinstance(value, (int, float)) and not isinstance(value, bool):
+            said.append(words.format(value))
+    return ", ".join(said)
+
+
+def length_words(question) -> str:
+    """The one drawn length of a question, for a title that does not say it."""
+    length = question.get("length_um")
+    return f"L = {length:g} µm, " if isinstance(length, (int, float)) else ""
+
+
+@contextmanager
+def drawn(asked: Asked, answer: Answer) -> Iterator[tuple[Any, str] | None]:
+    """An answer's figure and its title, closed in the end; None for a kind that has no figure."""
+    draw = DRAWERS.get(answer.kind)
+    if draw is None:
+        yield None
+        return
+    with sns.axes_style("ticks"), sns.plotting_context("notebook"):
+        with matplotlib.rc_context(DRAWING):
+            figure, title = draw(answer)
+            try:
+                length = "" if "L = " in title else length_words(answer.question)
+                title = f"{inert(title)}\n{length}{conditions(asked, answer.question)}"
+                figure.suptitle(title.replace("$", r"\$"), fontsize="medium")
+                sns.despine(figure)
+                figure.tight_layout()
+                yield figure, title
+            finally:
+                plt.close(figure)
+
+
+def as_file(figure, kind: str, box="tight") -> bytes:
+    """A figure as the bytes of a PNG or SVG file. box : the part of it to be kept, in inches; "tight" for all"""
+    buffer = BytesIO()
+    metadata = {"Date": None} if kind == "svg" else None
+    figure.savefig(buffer, format=kind, dpi=110, metadata=metadata, bbox_inches=box)
+    return buffer.getvalue()
 
 
 def draw_all(job: Job, answers: list[Answer]) -> dict[str, bytes]:
     """Every answer's figure as PNG and SVG, by file name."""
-    sns.set_theme(style="ticks", context="notebook")
     files = {}
-    # a fixed salt and no date, so that the same answers give the same bytes
-    with matplotlib.rc_context({"svg.hashsalt": "widthwise", "svg.fonttype": "none"}):
-        for asked, answer in zip(job.asked, answers):
-            figure, title = DRAWERS[answer.kind](answer)
-            figure.suptitle(inert(title).replace("$", r"\$"))
-            sns.despine(figure)
-            figure.tight_layout()
-            for kind in ("png", "svg"):
-                buffer = BytesIO()
-                metadata = {"Date": None} if kind == "svg" else None
-                figure.savefig(buffer, format=kind, dpi=110, metadata=metadata, bbox_inches="tight")
-                files[f"{asked.name}.{kind}"] = buffer.getvalue()
-            plt.close(figure)
+    for asked, answer in zip(job.asked, answers):
+        with drawn(asked, answer) as made:
+            if made:
+                files |= {f"{asked.name}.{kind}": as_file(made[0], kind) for kind in ("png", "svg")}
     return files

@@ -3,8 +3,11 @@
 from dataclasses import dataclass, replace
 
 from physics import dopants, roughness, short_channel, threshold
-from physics.counted import CountedLaw, layered_weight_density
+from physics.counted import CountedLaw, layered_law
 from physics.device import Device
+from physics.edge_patch import edge_patch
+from physics.edge_surface import SolvedEdge
+from physics.edges import Edge
 from studies.errors import InputError
 from studies.process_file import Device as DeviceRecord
 from studies.units import SUFFIXES, si
@@ -23,6 +26,8 @@ class Geometry:
     oxide_sigma : relative sigma of the mean oxide thickness [1]
     grain_sigma, remainder_sigma : sigma of the threshold [V]
     current_factor_sigma : relative sigma of the current factor [1]
+    edge : the nominal device's edge; of a solved one its quick stand-in around this width
+    sigma_ratio, skewness_ratio : of the dopant scatter over their closed forms [1]; 1 but for solved edges
     fringe_shape : field-oxide shape whose fringe dopants are counted too, 0 for none [1]
     counted : tabulated law of the dopants; None for the normal law or none
     """
@@ -36,6 +41,9 @@ class Geometry:
     grain_sigma: float
     remainder_sigma: float
     current_factor_sigma: float
+    edge: Edge
+    sigma_ratio: float
+    skewness_ratio: float
     fringe_shape: float
     counted: CountedLaw | None
 
@@ -49,10 +57,10 @@ def make_geometry(
     Raises InputError for a width or a length that its bias or its variation eats up, a width outside an edge's table, a
     channel too short for its formula, or one with hardly a dopant under it.
     """
-    width = _electrical(record, where, width_um, "width")
-    length = _electrical(record, where, length_um, "length")
+    width = electrical(record, where, width_um, "width")
+    length = electrical(record, where, length_um, "length")
     sized = replace(nominal, width=width, length=length)
-    _check_edge_table(sized, where)
+    check_edge_table(sized, record, where)
     state = threshold.electrostatics(sized)
     try:
         threshold.threshold_voltage(sized, state)
@@ -70,6 +78,10 @@ def make_geometry(
             "oxide thickness must leave some oxide"
         )
     fringe_shape = sized.edge.shape if scatter.fringe_dopants else 0.0
+    edge, sigma_ratio, skewness_ratio = sized.edge, 1.0, 1.0
+    if isinstance(edge, SolvedEdge):
+        sigma_ratio, skewness_ratio = float(edge.sigma_ratio(width)), float(edge.skewness_ratio(width))
+        edge = edge_patch(edge, width)
     return Geometry(
         width=width,
         length=length,
@@ -82,12 +94,18 @@ def make_geometry(
         current_factor_sigma=float(
             roughness.area_law_sigma(si(scatter, "current_factor_pair_percent_um"), width, length)
         ),
+        edge=edge,
+        sigma_ratio=sigma_ratio,
+        skewness_ratio=skewness_ratio,
         fringe_shape=fringe_shape,
-        counted=_counted_law(sized, state, fringe_shape, where) if scatter.dopants == "counted" else None,
+        counted=_counted_law(sized, state, fringe_shape, skewness_ratio, where)
+        if scatter.dopants == "counted"
+        else None,
     )
 
 
-def _electrical(record: DeviceRecord, where: str, drawn_um: float, dimension: str) -> float:
+def electrical(record: DeviceRecord, where: str, drawn_um: float, dimension: str) -> float:
+    """Electrical width or length [m] of a drawn one; raises InputError where its bias eats it up."""
     bias = getattr(record, f"{dimension}_bias_nm")
     electrical = drawn_um * SUFFIXES["um"] + bias * SUFFIXES["nm"]
     if electrical <= 0:
@@ -105,11 +123,13 @@ def _check_clear(inputs, where: str, dimension: str, electrical: float, edge_key
         )
 
 
-def _check_edge_table(device: Device, where: str) -> None:
+def check_edge_table(device: Device, record: DeviceRecord, where: str) -> None:
+    """Raise InputError for a width below those that an edge's table or surface holds for."""
     smallest = getattr(device.edge, "smallest_width", 0.0)
     if device.width < smallest * (1 - 1e-9):
+        key = "table_width_um" if record.edge.kind == "table" else 'method = "solved"'
         raise InputError(
-            f"{where}.edge.table_width_um: the table starts at {smallest * 1e6:g} um; an electrical width of "
+            f"{where}.edge.{key}: the table starts at {smallest * 1e6:.4g} um; an electrical width of "
             f"{device.width * 1e6:g} um is asked for"
         )
 
@@ -140,9 +160,11 @@ def _grain_sigma(scatter, device: Device) -> float:
     return float(roughness.grain_sigma(si(scatter, "grain_mv"), area, device.width, device.length, factor))
 
 
-def _counted_law(device: Device, state, fringe_shape: float, where: str) -> CountedLaw:
+def _counted_law(device: Device, state, fringe_shape: float, skewness_ratio: float, where: str) -> CountedLaw:
+    """Law of the dopants; one of another skewness is that of as many dopants as have it."""
     profile, depletion = device.profile, state.depletion_width
     count = dopants.weighted_count(profile, depletion, device.width, device.length, 0, fringe_shape)
+    count = count / skewness_ratio**2
     if count < FEWEST_DOPANTS:
         raise InputError(
             f"{where}: {count:.2g} dopants under a channel of {device.width * 1e6:g} by {device.length * 1e6:g} um; below "
@@ -152,8 +174,4 @@ def _counted_law(device: Device, state, fringe_shape: float, where: str) -> Coun
     fringe = dopants.fringe_weighted_dopants(profile.surface_doping, depletion, fringe_shape, 0)
     fringe_ratio = fringe / (profile.doping * device.width * depletion)
     surface_ratio = profile.surface_doping / profile.doping
-
-    def density(weight):
-        return layered_weight_density(weight, surface_ratio, depth_ratio, fringe_ratio)
-
-    return CountedLaw.build(float(count), density)
+    return layered_law(float(count), float(surface_ratio), float(depth_ratio), float(fringe_ratio))

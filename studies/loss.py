@@ -7,25 +7,26 @@ causes act nearly linearly. So the estimator is asked for each side on the nomin
 time moved by STEP sigmas both ways, and a parabola in each cause gives p(die) for every drawn die.
 """
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from time import perf_counter
 
 import numpy as np
 import pandas as pd
-from joblib import Parallel, delayed
 from scipy.special import ndtr, ndtri
 
 from mc.array_yield import array_failure, defect_yield
+from mc.codec import storable
 from mc.experiment import Inputs
 from mc.intervals import Estimate, bounded_mean, fraction_exact
 from mc.plan import Block
 from mc.rare import RareEstimate, failure_probability
-from mc.runner import Progress
+from mc.runner import Progress, results
 from studies.answer import Answer, asked_columns, columns_of
 from studies.errors import InputError
 from studies.loss_question import Question
 from studies.margins import SIDES, LimitState, Margins
 from studies.notes import loss_notes, loss_sentences, model_notes
+from studies.numbers import Number
 from studies.population import Population
 from studies.process_file import LEVELS, ProcessFile
 from studies.settings import Settings, Workers
@@ -38,9 +39,11 @@ DIES = 65_536
 COUNTED = 200_000  # devices counted plainly beside the estimator
 LEAST_SHARE = 1e-300
 SQUARE_CENTIMETRE = 1e-4  # [m^2]
+BETTER = {"device_failure": -1, "chip_yield": 1, "good_chips_per_cm2": 1}
 RESOLVED = 1e-15  # smallest failure share spoken of: causes are held 8 sigmas out
 
 
+@storable
 @dataclass(frozen=True, kw_only=True)
 class Side:
     """One side's failure share on a die, as a surface.
@@ -150,6 +153,12 @@ def study(margins: Margins, seed: int) -> Width:
     )
 
 
+def _parts_of_study(item: tuple[Margins, int]) -> dict:
+    """What `study` finds, without the margins that the caller has."""
+    width = study(*item)
+    return {each.name: getattr(width, each.name) for each in fields(width) if each.name != "margins"}
+
+
 def _score(share: RareEstimate) -> float:
     """Normal score of a failure share; NaN where it is too small to be met."""
     return float(-ndtri(share.value)) if share.value >= RESOLVED else np.nan
@@ -181,12 +190,16 @@ def answer(
     started = perf_counter()
     margins = _margins(question, file)
     population = margins[0].population
-    tasks = (delayed(study)(each, settings.seed) for each in margins)
-    parallel = Parallel(n_jobs=workers.jobs, backend=workers.backend, return_as="generator")
-    widths = []
-    for number, width in enumerate(parallel(tasks), start=1):
-        widths.append(width)
-        progress(number, len(margins))
+    found = results(
+        _parts_of_study,
+        {f"{width!r} um": (each, settings.seed) for width, each in zip(question.width_um, margins)},
+        jobs=workers.jobs,
+        backend=workers.backend,
+        progress=progress,
+        ledger=workers.ledger,
+        name="widths",
+    )
+    widths = [Width(margins=each, **parts) for each, parts in zip(margins, found)]
     names = die_names(population)
     count = settings.samples or DIES
     slices = Inputs(seed=settings.seed, names=names).slices(Block(0, count)) if names else ()
@@ -210,7 +223,23 @@ def answer(
         block_size=len(dies),
         evaluations=sum(width.calls + COUNTED for width in widths),
         seconds=perf_counter() - started,
+        numbers=_numbers(table),
     )
+
+
+def _numbers(table: pd.DataFrame) -> tuple[Number, ...]:
+    """Numbers of every width, and the most good chips of all; failure shares of two options share no samples."""
+
+    def number(name, row, width):
+        quantity, _, unit = name.partition("_per_")
+        value, low, high = (row[f"{quantity}{end}{unit and f'_per_{unit}'}"] for end in ("", "_low", "_high"))
+        estimate = Estimate(value=value, low=low, high=high, level=0.95, n=0, method="rare events")
+        return Number(name=name, width_um=width, better=BETTER[name], estimate=estimate)
+
+    rows = table.to_dict("records")
+    numbers = [number(name, row, row["width_um"]) for name in BETTER for row in rows]
+    best = max(rows, key=lambda row: row["good_chips_per_cm2"])
+    return (*numbers, replace(number("good_chips_per_cm2", best, None), name="most_good_chips_per_cm2"))
 
 
 def _plain(share: RareEstimate) -> Estimate:

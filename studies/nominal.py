@@ -5,9 +5,12 @@ import numpy as np
 from physics import edges, short_channel, silicon, threshold
 from physics.device import Device
 from physics.profile import StepProfile, UniformProfile
+from studies.edge_table import edge_table
 from studies.errors import InputError, one_line
+from studies.process_edge import Edge as EdgeRecord
 from studies.process_file import Device as DeviceRecord
 from studies.process_file import ProcessFile
+from studies.section import edge_section
 from studies.units import SUFFIXES, ZERO_CELSIUS, si
 
 INTRINSIC_DENSITY = {
@@ -18,7 +21,8 @@ FIT_RANGE = {"sproul green": (200.0, 500.0), "misiakos tsamakis": (78.0, 340.0)}
 LEAST_DOPING_RATIO = 10.0  # over the intrinsic density; below it full depletion and Boltzmann mean nothing
 
 
-def _edge(record) -> edges.Edge:
+def closed_form_edge(record: EdgeRecord) -> edges.Edge:
+    """The edges by closed form or table, whatever the method says; none at all for a kind without a form."""
     if record.kind == "field oxide":
         return edges.FieldOxide(shape=np.pi / 2 if record.shape is None else record.shape)
     if record.kind == "trench":
@@ -60,7 +64,7 @@ def nominal_device(file: ProcessFile, name: str, *, body_bias_v: float, temperat
 
     body_bias_v : reverse body bias, a magnitude
     temperature_c : overrides the file's temperature; None keeps it
-    Raises InputError for a surface layer deeper than the depletion region.
+    Raises InputError for a surface layer deeper than the depletion region, and for a cross-section that cannot be solved.
     """
     record = file.device(name)
     density = file.process.intrinsic_density
@@ -81,13 +85,16 @@ def nominal_device(file: ProcessFile, name: str, *, body_bias_v: float, temperat
         profile=_profile(record),
         gate_work_function=_gate_work_function(record, temperature),
         oxide_charge=si(record, "oxide_charge_per_cm2"),
-        edge=_edge(record.edge),
+        edge=closed_form_edge(record.edge),
         short_channel=_short_channel(record),
         body_bias=body_bias_v,
         quantum_shift=record.quantum_shift,
         gate_doping=np.inf if record.gate_doping_per_cm3 is None else si(record, "gate_doping_per_cm3"),
     )
-    _check(device, record, f"{one_line(file.path)}: device.{one_line(name)}")
+    where = f"{one_line(file.path)}: device.{one_line(name)}"
+    _check(device, record, where)
+    if record.edge.method == "solved":
+        return device.varied(edge=edge_table(edge_section(device, record, where)).edge)
     return device
 
 
@@ -101,7 +108,7 @@ def _check(device: Device, record: DeviceRecord, where: str) -> None:
                 f"{where}.{key} = {getattr(record, key):g}: at {celsius:g} C the silicon is intrinsic; at least "
                 f"{least / SUFFIXES['per_cm3']:.2g} is needed"
             )
-    if record.edge.kind == "trench" and si(record.edge, "field_oxide_nm") <= device.oxide_thickness:
+    if record.edge.field_oxide_nm is not None and si(record.edge, "field_oxide_nm") <= device.oxide_thickness:
         raise InputError(
             f"{where}.edge.field_oxide_nm = {record.edge.field_oxide_nm:g}: must be more than oxide_thickness_nm"
         )

@@ -2,8 +2,10 @@
 
 import numpy as np
 
+from physics.edge_surface import SolvedEdge
 from physics.edges import FieldOxide, TabulatedEdge, Trench
 from physics.short_channel import LongChannel, QuasiTwoDimensional
+from studies.edge_notes import solved_edge_notes
 from studies.population import Population
 from studies.variation import CAUSES
 
@@ -18,36 +20,57 @@ def edge_note(population: Population) -> str:
     """How far the edge's closed form can be trusted."""
     edge = population.nominal.edge
     if isinstance(edge, FieldOxide):
-        note = f"Edge: field oxide, closed form with shape {edge.shape:.3g}."
+        note = (
+            f"Edges: field oxide, closed form: the depleted area beyond the channel's two edges is {edge.shape:.3g} times the "
+            "depletion width squared (the key edge.shape)."
+        )
         if edge.shape > 0.5 * QUARTER_CIRCLES:
             return note + (
-                " Quarter circles (1.57) are an upper bound: for a flat surface with an abrupt step and no field implant "
-                "a field solution gives a tenth to a fifth of that shift. Measure two widths, or lower the shape."
+                " Two quarter circles (1.57) are an upper bound: for a flat surface with an abrupt step and no field implant "
+                "a field solution gives a tenth to a fifth of that shift. Measure the threshold at two widths, or lower it."
             )
-        return note + " The shape is a guess about geometry until two widths have been measured."
+        return note + (
+            " It is a guess about geometry, and a narrow device's shift is proportional to it: measure the threshold at two "
+            "widths, the narrowest included."
+        )
     if isinstance(edge, Trench):
-        return "Edge: trench, closed form; a field solution confirms its shift to 10 to 20 %."
+        return (
+            "Edges: trench, closed form of a flat surface; a field solution confirms its shift to 10 to 20 %. A recessed "
+            "or rounded corner changes it: measure the threshold at two widths."
+        )
     if isinstance(edge, TabulatedEdge):
-        return "Edge: the table's factors, interpolated smoothly; as good as the table."
-    return "Edge: none. The width effect on the mean threshold is left out."
+        return "Edges: the factors of the process file's table, interpolated smoothly; as good as the table."
+    return "Edges: none. The threshold then does not depend on the width; real narrow devices do."
 
 
 def model_notes(population: Population) -> list[str]:
     """Which approximations were used."""
-    notes = [edge_note(population)]
+    solved = isinstance(population.nominal.edge, SolvedEdge)
+    notes = solved_edge_notes(population) if solved else [edge_note(population)]
     kind = population.nominal.short_channel
     if isinstance(kind, LongChannel):
-        notes.append("Length: no short-channel effect; gate-edge roughness then moves currents but not thresholds.")
+        notes.append(
+            "Length: no short-channel effect, so that neither length nor gate-edge roughness moves the threshold. It holds for "
+            "long channels: measure the threshold at two lengths, and where it differs choose a form (short_channel.kind)."
+        )
     else:
         name = "quasi-two-dimensional" if isinstance(kind, QuasiTwoDimensional) else "charge sharing (Yau)"
-        notes.append(f"Length: {name}; the factors of width and length are multiplied, an approximation.")
+        notes.append(
+            f"Length: {name} form of the short channel. Its part and the edges' part multiply, an approximation: trust it "
+            "least where the device is both narrow and short, and measure that corner."
+        )
     scatter = population.record.scatter
     if scatter.fringe_dopants:
-        notes.append("Dopants: the fringe's own are counted too (fringe_dopants): an upper bound.")
+        notes.append("Dopants: those under the fringe of the edges are counted too (fringe_dopants): an upper bound.")
     elif scatter.dopants == "off":
-        notes.append("Dopants: switched off. The scatter of narrow devices is understated.")
+        notes.append(
+            "Dopants: their random number and place are switched off. The scatter of narrow devices is understated."
+        )
     if scatter.remainder_pair_mv_um == 0:
-        notes.append("No measured remainder is given: real pairs scatter more than the modelled causes alone.")
+        notes.append(
+            "No measured remainder is given: published pairs scatter some three times as much as their dopants alone explain. "
+            "Measure pairs of one size and give scatter.remainder_pair_mv_um: little else would change sigma more."
+        )
     return notes
 
 
@@ -77,7 +100,7 @@ def spread_sentences(answer_rows) -> tuple[str, ...]:
         if first.get("vth_device_sigma_area_law_mv"):
             departure = 100 * (first["vth_device_sigma_mv"] / first["vth_device_sigma_area_law_mv"] - 1)
             sentences[-1] += (
-                f" Its local sigma is {departure:+.1f} % off the 1/sqrt(W L) line laid from W = {last['width_um']:g} um."
+                f" Its sigma between neighbours is {departure:+.1f} % off the 1/sqrt(W L) line laid from W = {last['width_um']:g} um."
             )
     return tuple(sentences)
 
@@ -108,8 +131,8 @@ def timing_tail_notes(question, tails) -> list[str]:
         return []
     notes = [
         f"A yield of {100 * question.target_yield:.12g} % asks for rarer chips than the dies drawn can show: periods, and "
-        "yields near 100 %, come from an estimator of rare events on the same model. So far out they rest on the laws' tails "
-        "and on the path's delay being known by four cumulants."
+        "yields near 100 %, come from an estimator of rare events on the same model. So far out they rest on the tails of the "
+        "laws assumed, which no sample has tested, and on a path's delay being described by mean, sigma, skew and kurtosis."
     ]
     for width, tail in zip(question.width_um, tails):
         notes += [f"W = {width:g} um: the estimator doubts itself: {doubt}." for doubt in tail.doubts]
@@ -163,7 +186,7 @@ def smallest_area(best, searches) -> str:
 
 def pair_notes(question, population: Population, best, whole, rows) -> list[str]:
     """What a designer of pairs should know of this answer. whole : the answer's width as one finger, or None"""
-    notes = ["Offset and error come from the two drawn devices at their operating point, both saturated."]
+    notes = ["Offset and error are computed from two drawn devices each at its operating point, both saturated."]
     if whole is not None:
         width, shown = best.shown_width(), "mV" if question.limit_mv else "%"
         split, one = best.error_sigma(width), whole.error_sigma(width)
@@ -225,17 +248,21 @@ def loss_sentences(question, rows) -> tuple[str, ...]:
 def loss_notes(question, widths) -> list[str]:
     """What a designer of arrays should know of this answer."""
     notes = [
-        "Dies differ: the chip yield is the mean over dies of the binomial yield at each die's own failure share, which is "
-        "found by moving one die-level cause at a time (an approximation: causes are taken not to interact)."
+        "Dies differ: each has its own share of failing devices, and the chip yield is the mean over dies. A die's share is "
+        "found by moving one cause of the die at a time, an approximation that takes causes not to reinforce each other. "
+        "Failures so rare rest on the laws' tails: count failures of a test array to check the largest share."
     ]
+    unseen = ", ".join(f"{width.margins.geometry.drawn_width * 1e6:g}" for width in widths if width.unresolved)
+    if unseen:
+        notes.append(
+            f"W = {unseen} um: failures of one kind are too rare to be met (below 1e-15, or impossible); the chip yield "
+            "leaves them out."
+        )
     for width in widths:
         drawn = width.margins.geometry.drawn_width * 1e6
-        if width.unresolved:
-            notes.append(
-                f"W = {drawn:g} um: failures of a kind are too rare to be met, below 1e-15 or impossible; the chip yield "
-                "leaves them out."
-            )
         notes += [f"W = {drawn:g} um: the estimator doubts itself: {doubt}." for doubt in width.doubts()]
     if question.defects_per_cm2 == 0:
-        notes.append("Defects are left out; give defects_per_cm2 to compare chips of different size.")
+        notes.append(
+            "Defects are left out, which flatters large chips; give defects_per_cm2 to compare chips of different size."
+        )
     return notes

@@ -16,6 +16,7 @@ from mc.runner import Progress, run
 from studies.answer import Answer, make_plan, precision_notes
 from studies.biasing import Biasing
 from studies.notes import model_notes, pair_notes, pair_sentences
+from studies.pair_numbers import pair_numbers
 from studies.pair_question import Question
 from studies.pair_search import Search
 from studies.pairing import Arrangement
@@ -27,7 +28,7 @@ from studies.units import SUFFIXES, si
 __all__ = ["Question", "answer", "check"]
 
 DRAWS_AT_ONCE = 200_000  # a slice's chips times its random numbers
-BLOCK = 8192
+BLOCK = 4096
 FEWEST_AT_ONCE = 256  # chips evaluated at once, however many pairs they have
 DEVICES_A_BLOCK = 65_536  # pairs times fingers of a block's chips, so that few chips of many pairs still share out
 MOST_PAIRS = 2_000_000  # pairs (times fingers) drawn at a width by default; beyond what they can count, rare events
@@ -59,7 +60,9 @@ def answer(
             biasing=Biasing(question, arrangement, length),
             plan=_plan(question, settings),
             inputs=_inputs(arrangement, settings),
-            evaluate=partial(run, jobs=workers.jobs, backend=workers.backend, progress=progress),
+            evaluate=partial(
+                run, jobs=workers.jobs, backend=workers.backend, progress=progress, ledger=workers.ledger
+            ),
         )
         search.run()
         searches.append(search)
@@ -86,6 +89,7 @@ def answer(
         evaluations=sum(search.evaluations for search in searches),
         seconds=perf_counter() - started,
         met=best.met,
+        numbers=pair_numbers(best),
     )
 
 
@@ -100,6 +104,7 @@ def _as_one_finger(best: Search) -> Search:
         biasing=Biasing(question, arrangement, best.biasing.length_um),
         inputs=replace(best.inputs, names=(*arrangement.die_names(), *arrangement.pair_names())),
         judged={},
+        grouped={},
         tail={},
         evaluations=0,
     )

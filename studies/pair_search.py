@@ -8,6 +8,7 @@ import pandas as pd
 from scipy.special import ndtri
 
 from mc.experiment import Inputs
+from mc.groups import Grouped, Groups
 from mc.intervals import Estimate, Summary, quantile_ranks
 from mc.plan import Plan
 from mc.rare import RareEstimate
@@ -31,6 +32,7 @@ TOLERANCES = {"value": 2e-4, "low": 2e-3, "high": 2e-3}  # of the limit; the bou
 class Search:
     """The search of one length: widths judged so far, and the one that was looked for.
 
+    judged, grouped : tally and row of every width, summed and in groups of chips
     width : smallest width [um] with the widths at which the yield's bounds cross the target
     """
 
@@ -41,6 +43,7 @@ class Search:
     inputs: Inputs
     evaluate: partial
     judged: dict[float, tuple[PairTally, int]] = field(default_factory=dict)
+    grouped: dict[float, tuple[Groups, int]] = field(default_factory=dict)
     tail: dict[float, RareEstimate] = field(default_factory=dict)
     width: Estimate | None = None
     met: bool = False
@@ -51,15 +54,22 @@ class Search:
         """Tally chips at several widths on the same draws."""
         candidates = tuple(self.biasing.candidate(width) for width in widths_um)
         task = PairChips.prepare(self.arrangement, candidates, self.question.limit, self.inputs)
-        tally, self.samples = self.evaluate(task, self.plan, half_width=_yield_half_width)
+        grouped, self.samples = self.evaluate(
+            Grouped(task=task),
+            self.plan,
+            half_width=lambda so_far: _yield_half_width(so_far.total()),
+            name=self._run_name("all causes", widths_um),
+        )
+        tally = grouped.total()
         self.evaluations += self.samples * self.arrangement.evaluations_per_chip * len(candidates)
         for row, width in enumerate(widths_um):
             self.judged[width] = (tally, row)
+            self.grouped[width] = (grouped, row)
 
     def run(self) -> None:
         """Judge the overview, find the crossings, and judge the answer on the layout grid."""
         question = self.question
-        overview = list(np.geomspace(question.width_min_um, question.width_max_um, CURVE))
+        overview = self.overview()
         self.judge(overview)
         if self._tail_is_needed():
             return self._run_tail(overview)
@@ -76,6 +86,10 @@ class Search:
         )
         if self.met and self.width.value not in self.judged:
             self.judge([self.width.value])
+
+    def overview(self) -> list[float]:
+        """Widths judged first [um]: the whole range, evenly on a logarithmic scale."""
+        return list(np.geomspace(self.question.width_min_um, self.question.width_max_um, CURVE))
 
     def _tail_is_needed(self) -> bool:
         """Whether so many chips bound the target's quantile not even from above."""
@@ -160,8 +174,7 @@ class Search:
 
     def rows(self, file: ProcessFile) -> list[dict]:
         """Rows of pair.csv: the overview and the answer."""
-        overview = np.geomspace(self.question.width_min_um, self.question.width_max_um, CURVE)
-        widths = sorted({*overview, self.shown_width()})
+        widths = sorted({*self.overview(), self.shown_width()})
         return [self._row(file, float(width)) for width in widths]
 
     def _row(self, file: ProcessFile, width_um: float) -> dict:
@@ -225,19 +238,19 @@ class Search:
         plan = Plan(samples=min(self.samples, SHARE_CHIPS), block_size=self.plan.block_size)
         error, unit, scale = self.question.error_words
 
-        def summary(names):
+        def summary(names, part):
             inputs = Inputs(
                 seed=self.inputs.seed, names=names, copula=self.inputs.copula, slice_size=self.inputs.slice_size
             )
             task = PairChips.prepare(self.arrangement, candidate, self.question.limit, inputs)
-            tally, chips = self.evaluate(task, plan)
+            tally, chips = self.evaluate(task, plan, name=self._run_name(part, [self.shown_width()]))
             self.evaluations += chips * self.arrangement.evaluations_per_chip
             return Summary(tally.every, 0)
 
-        whole = summary(self.inputs.names)
+        whole = summary(self.inputs.names, "all causes together")
         rows = []
         for cause, names in self._causes().items():
-            alone = summary(names)
+            alone = summary(names, f"{cause} alone")
             rows.append(
                 self._identity(file)
                 | {"width_um": self.shown_width(), "part": cause, "samples": alone.n}
@@ -245,6 +258,11 @@ class Search:
                 | columns_of("share", variance_share(alone, whole))
             )
         return pd.DataFrame(rows)
+
+    def _run_name(self, part: str, widths_um) -> str:
+        """What tells a run of this search from every other."""
+        widths = ", ".join(f"{width!r}" for width in map(float, widths_um))
+        return f"{part}, L = {self.biasing.length_um!r} um, {self.question.fingers} fingers, W = {widths} um"
 
     def _causes(self) -> dict[str, tuple[str, ...]]:
         """Inputs of each cause that differs between the two devices of a pair."""

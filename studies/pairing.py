@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.optimize import brentq
 
+from mc.codec import storable
 from mc.experiment import Inputs
 from mc.intervals import Estimate, Summary, fraction_exact
 from mc.plan import Block
@@ -135,6 +136,7 @@ def current_at_efficiency(channel: Channel, efficiency: float) -> float | None:
     return float(saturated_current(channel, brentq(excess, low, high)))
 
 
+@storable
 @dataclass(frozen=True, kw_only=True, eq=False)
 class PairTally:
     """Sums over chips, for every candidate: the worst pair of each chip, all pairs, and how many stayed inside.

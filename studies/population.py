@@ -85,7 +85,7 @@ class Population:
         return Silicon(device, electrostatics(device))
 
     def devices(self, draws: Draws, geometry: Geometry, silicon: Silicon) -> Device:
-        """Devices of one geometry: dimensions with their variation and rough edges, oxide with its roughness."""
+        """Devices of one geometry: dimensions with their variation and rough edges, oxide with its roughness, its edge."""
         width = self._deviated(draws, "width", geometry.width)
         length = self._deviated(draws, "length", geometry.length)
         if (normal := self._normal(draws, "gate_edges")) is not None:
@@ -95,7 +95,7 @@ class Population:
         thickness = silicon.device.oxide_thickness
         if (normal := self._normal(draws, "oxide_roughness")) is not None:
             thickness = thickness * (1 + geometry.oxide_sigma * normal)
-        return silicon.device.varied(width=width, length=length, oxide_thickness=thickness)
+        return silicon.device.varied(width=width, length=length, oxide_thickness=thickness, edge=geometry.edge)
 
     def scatter(self, draws: Draws, geometry: Geometry, device: Device, state: Electrostatics):
         """Signed shift of the threshold by dopants, grains and the measured remainder [V]."""
@@ -112,8 +112,10 @@ class Population:
         place = device.profile, state.depletion_width, device.width, device.length
         capacitance = oxide_capacitance(device.oxide_thickness)
         root, sigma = dopants.dopant_root_and_sigma(*place, capacitance, geometry.fringe_shape)
-        scatter = normal if geometry.counted is None else geometry.counted.at_inverse_root(normal, 1 / root)
-        scatter = sigma * scatter
+        scatter = normal
+        if geometry.counted is not None:
+            scatter = geometry.counted.at_inverse_root(normal, geometry.skewness_ratio / root)
+        scatter = geometry.sigma_ratio * sigma * scatter
         return scatter if device.polarity == 1 else -scatter
 
     def thresholds(self, draws: Draws, geometry: Geometry, silicon: Silicon, drain_voltage: float):

@@ -5,56 +5,18 @@ documentation: every key, its range and its meaning.
 """
 
 from dataclasses import dataclass
-from itertools import pairwise
 from pathlib import Path
 from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
 from studies.errors import InputError, nearest, one_line
+from studies.process_edge import Edge
+from studies.ranges import Doping, NotNegative, Percent, Positive, Thickness
 from studies.validated import Record, read_toml, validated
-
-Positive = Annotated[float, Field(gt=0)]
-NotNegative = Annotated[float, Field(ge=0)]
-Thickness = Annotated[float, Field(gt=0.2, le=2000)]
-Doping = Annotated[float, Field(ge=1e13, le=1e21)]
-Percent = Annotated[float, Field(ge=0, le=30)]
 
 LEVELS = ("lot", "wafer", "die", "device")
 LAWS = Literal["normal", "lognormal", "truncated normal", "uniform", "empirical"]
-
-
-class Edge(Record):
-    """The two edges along the channel's width."""
-
-    kind: Literal["none", "field oxide", "trench", "table"]
-    """what bounds the channel"""
-    shape: Annotated[float, Field(gt=0, le=4)] | None = None
-    """field oxide: fringe area of both edges over the squared depletion width; 1.5708 two quarter circles"""
-    field_oxide_nm: Thickness | None = None
-    """trench: oxide between the gate and the silicon beside it"""
-    table_width_um: list[Positive] | None = None
-    """table: electrical widths, increasing"""
-    table_factor: list[Positive] | None = None
-    """table: factor on the bulk depletion charge at those widths"""
-
-    @model_validator(mode="after")
-    def _consistent(self):
-        needed = {"trench": ["field_oxide_nm"], "table": ["table_width_um", "table_factor"]}.get(self.kind, [])
-        allowed = {"field oxide": ["shape"]}.get(self.kind, needed)
-        for key in ("shape", "field_oxide_nm", "table_width_um", "table_factor"):
-            given = getattr(self, key) is not None
-            if key in needed and not given:
-                raise ValueError(f"kind = \"{self.kind}\" needs '{key}'")
-            if given and key not in allowed:
-                raise ValueError(f"'{key}' has no effect with kind = \"{self.kind}\"; remove it")
-        if self.kind == "table":
-            widths = self.table_width_um
-            if len(widths) != len(self.table_factor) or len(widths) < 2:
-                raise ValueError("table_width_um and table_factor need the same number of entries, two or more")
-            if any(second <= first for first, second in pairwise(widths)):
-                raise ValueError("table_width_um must increase")
-        return self
 
 
 class ShortChannel(Record):
@@ -256,6 +218,8 @@ class Device(Record):
             raise ValueError(
                 'scatter.fringe_dopants = true needs edge.kind = "field oxide" and dopants that are not "off"'
             )
+        if self.scatter.fringe_dopants and self.edge.method == "solved":
+            raise ValueError('scatter.fringe_dopants = true has no effect with edge.method = "solved"; remove it')
         return self
 
 

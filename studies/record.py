@@ -1,4 +1,4 @@
-"""The output folder: tidy CSVs, figures, answers.json and record.json. All is computed before anything is written."""
+"""The output folder: tidy CSVs, figures, report.html, answers.json and record.json. All is computed before anything is written."""
 
 import json
 import math
@@ -15,12 +15,14 @@ from studies import __version__
 from studies.answer import Answer, columns_of
 from studies.errors import InputError, one_line
 from studies.job import Job
+from studies.keeping import kept_fingerprint
 from studies.notes import CAUTION
 from studies.questions import SUMMARIES
 from studies.settings import Workers
 from studies.units import split_unit
 
-RECORD = "record.json"
+RECORD, REPORT = "record.json", "report.html"
+FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
 LIBRARIES = ("numpy", "scipy", "pandas", "joblib", "pydantic")
 
 
@@ -41,7 +43,8 @@ def check_folder(folder: Path, job: Job, replace: bool) -> None:
         raise
     except (OSError, ValueError) as error:
         raise InputError(f"{where}: cannot be used ({one_line(getattr(error, 'strerror', None) or error)})") from None
-    if filled and _old_record(folder).get("fingerprint") != job.fingerprint() and not replace:
+    known = {_old_record(folder).get("fingerprint"), kept_fingerprint(folder)} if filled else set()
+    if filled and job.fingerprint() not in known and not replace:
         held = "the results of another job" if (folder / RECORD).exists() else "files that are no results of this job"
         raise InputError(f"{where}: holds {held}; choose another folder or add --replace")
 
@@ -59,7 +62,9 @@ def _old_files(folder: Path) -> list[Path]:
     """Files that an earlier run wrote, by its own record."""
     names = _old_record(folder).get("files")
     names = [name for name in names if isinstance(name, str)] if isinstance(names, list) else []
-    ours = re.compile(rf"({'|'.join(SUMMARIES)})(_[^/\\]*)?\.(csv|png|svg)|answers\.json|record\.json")
+    ours = re.compile(
+        rf"({'|'.join((*SUMMARIES, 'compare'))})(_[^/\\]*)?\.(csv|png|svg)|answers\.json|report\.html|record\.json"
+    )
     return [folder / name for name in names if ours.fullmatch(name) and name.isprintable()]
 
 
@@ -116,7 +121,7 @@ def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[s
             "fingerprint": job.fingerprint(),
             "written": datetime.now(UTC).isoformat(timespec="seconds"),
             "settings": job.settings.model_dump(),
-            "workers": workers.model_dump(),
+            "workers": {"jobs": workers.jobs, "backend": workers.backend},
             "questions": [
                 {
                     "name": asked.name,
@@ -146,21 +151,33 @@ def tables_of(answers: list[Answer]) -> dict[str, pd.DataFrame]:
     return {name: pd.concat(tables, ignore_index=True) for name, tables in gathered.items()}
 
 
+def inert_cells(table: pd.DataFrame) -> pd.DataFrame:
+    """A table in which no text is a formula to a spreadsheet: such a cell gets an apostrophe in front (common practice)."""
+
+    def inert(value):
+        return f"'{value}" if isinstance(value, str) and value.startswith(FORMULA_STARTS) else value
+
+    return table.map(inert)
+
+
 def write(folder: Path, job: Job, answers: list[Answer], workers: Workers) -> list[str]:
     """Write everything; each file appears whole or not at all, the record last. Returns the files' names.
 
     Raises InputError when the disk does not take them.
     """
     from studies.figures import draw_all  # the drawing library is slow to import
+    from studies.report import report_html
 
     contents = {
-        f"{name}.csv": table.to_csv(index=False, lineterminator="\n").encode()
+        f"{name}.csv": inert_cells(table).to_csv(index=False, lineterminator="\n").encode()
         for name, table in tables_of(answers).items()
     }
     contents |= draw_all(job, answers)
     contents["answers.json"] = _encoded(answers_json(job, answers))
-    files = [*contents, RECORD]
-    contents[RECORD] = _encoded(record_json(job, answers, workers, files))
+    files = [*contents, REPORT, RECORD]
+    record = record_json(job, answers, workers, files)
+    contents[REPORT] = report_html(job, answers, record)
+    contents[RECORD] = _encoded(record)
     try:
         folder.mkdir(parents=True, exist_ok=True)
         for old in _old_files(folder):

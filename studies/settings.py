@@ -1,9 +1,11 @@
 """How a question is answered, as opposed to what is asked: seed, samples or precision, workers."""
 
+from dataclasses import dataclass, replace
 from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
+from mc.ledger import Part
 from studies.validated import Record
 
 
@@ -29,3 +31,24 @@ class Workers(Record):
 
     jobs: Annotated[int, Field(ge=1, le=1024)] = 1
     backend: Literal["loky", "threading", "multiprocessing"] = "loky"
+
+    @property
+    def ledger(self) -> None:
+        """Workers alone keep nothing."""
+
+    def keeping(self, ledger: Part | None) -> "Place":
+        """The same workers, their finished work kept in a part of a ledger."""
+        return Place(jobs=self.jobs, backend=self.backend, ledger=ledger)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Place:
+    """Workers, and where their finished work is kept."""
+
+    jobs: int
+    backend: str
+    ledger: Part | None
+
+    def keeping(self, ledger: Part | None) -> "Place":
+        """The same workers with another ledger."""
+        return replace(self, ledger=ledger)

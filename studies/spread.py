@@ -13,26 +13,30 @@ import pandas as pd
 from pydantic import Field
 
 from mc.experiment import Experiment, Inputs
+from mc.groups import Grouped, Groups
 from mc.intervals import Estimate, Summary
 from mc.plan import Plan
 from mc.runner import Progress, run
 from mc.sensitivity import variance_share
-from mc.tally import Moments
+from mc.tally import Moments, Tally
 from physics.edges import NoEdge
 from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
+from studies.edge_notes import edge_width_notes
 from studies.errors import InputError
 from studies.geometry import Geometry
 from studies.notes import bound_notes, model_notes, spread_sentences
+from studies.numbers import Number, numbers_of
 from studies.population import Population
 from studies.process_file import LEVELS, ProcessFile
 from studies.question import WidthQuestion
 from studies.settings import Settings, Workers
 from studies.variation import CAUSES
 
-BLOCK = 65536
+BLOCK = 16384  # small enough for a default run to have groups of blocks, from which errors of differences come
 DEFAULT_SAMPLES = 400_000
-SHARE_SAMPLES = 2 * BLOCK
+SHARE_SAMPLES = 8 * BLOCK
 QUANTILES = {"vth_p0_1": 0.001, "vth_p99_9": 0.999}
+BETTER = {"vth_mean_mv": 0, "vth_sigma_mv": -1, "vth_skew": 0, "vth_p0_1_mv": 0, "vth_p99_9_mv": 0}
 WITHOUT_EFFECT = ("mobility", "current_factor")  # causes that move currents but not thresholds
 
 
@@ -99,17 +103,22 @@ def answer(
         )
 
     widths = range(len(geometries))
-    tally, samples = run(
-        Experiment.prepare(model([groups["all"]]), inputs),
+    grouped, samples = run(
+        Grouped(task=Experiment.prepare(model([groups["all"]]), inputs)),
         make_plan(settings, default_samples=DEFAULT_SAMPLES, block_size=BLOCK),
-        half_width=lambda tally: max(_relative_half_width(Summary(tally, width).sigma()) for width in widths),
+        half_width=lambda so_far: max(_relative_half_width(Summary(so_far.total(), width).sigma()) for width in widths),
         jobs=workers.jobs,
         backend=workers.backend,
         progress=progress,
+        ledger=workers.ledger,
+        name="devices",
     )
+    tally = grouped.total()
     share_plan = Plan(samples=min(samples, SHARE_SAMPLES), block_size=BLOCK)
     share_experiment = Experiment.prepare(model(groups.values()), inputs, Moments)
-    share_tally, _ = run(share_experiment, share_plan, jobs=workers.jobs, backend=workers.backend)
+    share_tally, _ = run(
+        share_experiment, share_plan, jobs=workers.jobs, backend=workers.backend, ledger=workers.ledger, name="shares"
+    )
     parts = _parts(share_tally, list(groups), len(geometries))
 
     table = _table(question, file, population, geometries, [Summary(tally, width) for width in widths], parts)
@@ -126,6 +135,7 @@ def answer(
         sentences=spread_sentences(table.to_dict("records")),
         notes=(
             *model_notes(population),
+            *edge_width_notes(population, geometries),
             *bound_notes(table, "devices", "3700 or more are needed for the 0.1 % and 99.9 % quantiles"),
             *precision_notes(settings, samples),
         ),
@@ -133,7 +143,29 @@ def answer(
         block_size=BLOCK,
         evaluations=len(geometries) * (samples + share_plan.samples * len(groups)),
         seconds=perf_counter() - started,
+        numbers=_numbers(question, grouped, tally),
     )
+
+
+def _numbers(question: Question, grouped: Groups, tally: Tally) -> tuple[Number, ...]:
+    summaries = [Summary(tally, row) for row in range(len(question.width_um))]
+    found = {
+        "vth_mean_mv": [each.mean().scaled(1e3) for each in summaries],
+        "vth_sigma_mv": [each.sigma().scaled(1e3) for each in summaries],
+        "vth_skew": [each.skew() for each in summaries],
+    }
+    found |= {f"{name}_mv": [each.quantile(p).scaled(1e3) for each in summaries] for name, p in QUANTILES.items()}
+
+    def read(part: Tally):
+        mean, second, third, _ = part.central_moments()
+        variance = second * part.count / (part.count - 1)
+        skew = np.where(second > 0, third / np.maximum(second, np.finfo(float).tiny) ** 1.5, 0.0)
+        tails = [
+            [1e3 * part.value_at_rank(row, p * part.count) for row in range(len(mean))] for p in QUANTILES.values()
+        ]
+        return np.array([1e3 * mean, 1e3 * np.sqrt(variance), skew, *tails])
+
+    return numbers_of(BETTER, question.width_um, found, read, grouped)
 
 
 def _prepared(question: Question, file: ProcessFile):
@@ -191,7 +223,6 @@ def _share_table(question: Question, file: ProcessFile, parts) -> pd.DataFrame:
 
 def _table(question, file, population, geometries, summaries, parts) -> pd.DataFrame:
     silicon = population.silicon({})
-    without_edges = silicon._replace(device=replace(silicon.device, edge=NoEdge()))
     device_sigmas = [mine["level_device"].sigma_mv if "level_device" in mine else None for mine in parts]
     rows = []
     for width, geometry, summary, mine, local in zip(question.width_um, geometries, summaries, parts, device_sigmas):
@@ -213,7 +244,8 @@ def _table(question, file, population, geometries, summaries, parts) -> pd.DataF
         for name, quantile in quantiles.items():
             row |= {f"{name}_low_v": quantile.low, f"{name}_high_v": quantile.high}
         row["vth_nominal_v"] = float(population.thresholds({}, geometry, silicon, question.drain_v))
-        row["vth_nominal_without_edges_v"] = float(population.thresholds({}, geometry, without_edges, question.drain_v))
+        bare = replace(geometry, edge=NoEdge())
+        row["vth_nominal_without_edges_v"] = float(population.thresholds({}, bare, silicon, question.drain_v))
         if local is not None:
             row |= columns_of("vth_device_sigma", local, "mv")
             ratio = np.sqrt(geometries[-1].width / geometry.width)

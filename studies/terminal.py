@@ -2,8 +2,9 @@
 
 import errno
 import sys
-from contextlib import contextmanager
+from contextlib import contextmanager, nullcontext
 
+import numpy as np
 from rich.console import Console
 from rich.measure import Measurement
 from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
@@ -11,11 +12,19 @@ from rich.table import Table
 from rich.text import Text
 
 from studies.answer import Answer
+from studies.atoms_words import atoms_tables
+from studies.cells import bounds, plus_minus, text_table
 from studies.errors import inert, one_line
 from studies.notes import CAUTION
 
 WIDTH = 80
 LARGEST_CAUSES = 4
+SHOWN = {  # quantities of a comparison that are printed; the files hold all
+    "spread": ("vth_mean_mv", "vth_sigma_mv"),
+    "timing": ("min_width_um", "yield", "period_at_target_ps"),
+    "pair": ("min_width_um", "area_um2", "offset_sigma_mv", "error_sigma_percent"),
+    "loss": ("most_good_chips_per_cm2", "chip_yield", "good_chips_per_cm2"),
+}
 LEAST_PERCENT = 1e-4  # a loss below a hundredth of a percent is shown as a share
 
 
@@ -34,41 +43,22 @@ def console(stream=None) -> Console:
     return Printer(file=stream, width=width, markup=False, highlight=False, emoji=False)
 
 
-def _plus_minus(row, name: str, unit: str, digits: int, scale=1.0) -> str:
-    value, low, high = (row[f"{name}{part}{unit}"] * scale for part in ("", "_low", "_high"))
-    return f"{value:.{digits}f} ±{max(high - value, value - low):.{digits}f}"
-
-
-def _bounds(row, name: str, unit: str, digits: int, scale=1.0) -> str:
-    value, low, high = (row[f"{name}{part}{unit}"] * scale for part in ("", "_low", "_high"))
-    return f"{value:.{digits}f} [{low:.{digits}f}, {high:.{digits}f}]"
-
-
-def _table(title: str, columns: list[str], rows: list[list[str]]) -> Table:
-    table = Table(title=title, title_justify="left", title_style="bold", box=None, pad_edge=False, padding=(0, 2, 0, 0))
-    for column in columns:
-        table.add_column(column, justify="right", no_wrap=True)
-    for row in rows:
-        table.add_row(*row)
-    return table
-
-
 def spread_tables(answer: Answer) -> list[Table]:
     """Thresholds, then what makes the spread."""
     question, rows = answer.question, answer.table.to_dict("records")
     thresholds = [
         [
             f"{row['width_um']:g}",
-            _plus_minus(row, "vth_mean", "_v", 2, 1e3),
-            _bounds(row, "vth_sigma", "_mv", 2),
-            _plus_minus(row, "vth_skew", "", 2),
-            _plus_minus(row, "vth_p0_1", "_v", 1, 1e3),
-            _plus_minus(row, "vth_p99_9", "_v", 1, 1e3),
+            plus_minus(row, "vth_mean", "_v", 2, 1e3),
+            bounds(row, "vth_sigma", "_mv", 2),
+            plus_minus(row, "vth_skew", "", 2),
+            plus_minus(row, "vth_p0_1", "_v", 1, 1e3),
+            plus_minus(row, "vth_p99_9", "_v", 1, 1e3),
         ]
         for row in rows
     ]
     where = f"{one_line(answer.process)}, device {one_line(question['device'])}, L = {question['length_um']:g} um"
-    first = _table(
+    first = text_table(
         f"Threshold voltage in mV: {where}, {answer.samples} devices",
         ["W um", "mean", "sigma [95 %]", "skew", "0.1 %", "99.9 %"],
         thresholds,
@@ -90,7 +80,7 @@ def spread_tables(answer: Answer) -> list[Table]:
         if row.get("vth_device_sigma_mv")
     ]
     error = f" (±{100 * max(errors):.1f} %)" if errors else ""
-    second = _table(
+    second = text_table(
         f"Neighbours' sigma in mV{error} and the largest causes' shares of the variance in %",
         ["W um", "sigma", "1/√WL", *[cause.replace("_", " ") for cause in largest]],
         reasons,
@@ -110,10 +100,10 @@ def timing_tables(answer: Answer) -> list[Table]:
     rows = [
         [
             f"{row['width_um']:g}",
-            _lost(row) if rare else _bounds(row, "yield", "", 2, 100),
-            _plus_minus(row, "slowest_mean", "_ps", 1),
-            _plus_minus(row, "slowest_sigma", "_ps", 1),
-            _bounds(row, "period_at_target", "_ps", 0),
+            _lost(row) if rare else bounds(row, "yield", "", 2, 100),
+            plus_minus(row, "slowest_mean", "_ps", 1),
+            plus_minus(row, "slowest_sigma", "_ps", 1),
+            bounds(row, "period_at_target", "_ps", 0),
         ]
         for row in answer.table.to_dict("records")
     ]
@@ -128,7 +118,7 @@ def timing_tables(answer: Answer) -> list[Table]:
         "sigma ps",
         f"ps for {target}",
     ]
-    return [_table(title, columns, rows)]
+    return [text_table(title, columns, rows)]
 
 
 def _lost(row) -> str:
@@ -146,9 +136,9 @@ def pair_tables(answer: Answer) -> list[Table]:
             f"{row['length_um']:g}",
             f"{row['width_um']:.4g}" + (" <" if row["is_minimum"] else "  "),
             f"{row['area_um2']:.4g}",
-            _plus_minus(row, f"{error}_sigma", f"_{unit}", 4),
+            plus_minus(row, f"{error}_sigma", f"_{unit}", 4),
             f"{row['gm_over_i_per_v']:.1f}",
-            _bounds(row, "chip_yield", "", 2, 100),
+            bounds(row, "chip_yield", "", 2, 100),
         ]
         for row in answer.table.to_dict("records")
     ]
@@ -158,15 +148,15 @@ def pair_tables(answer: Answer) -> list[Table]:
     parts = [
         [
             row["part"].replace("_", " "),
-            _plus_minus(row, f"{error}_sigma", f"_{unit}", 3),
-            _plus_minus(row, "share", "", 1, 100),
+            plus_minus(row, f"{error}_sigma", f"_{unit}", 3),
+            plus_minus(row, "share", "", 1, 100),
         ]
         for row in shares.sort_values("share", ascending=False).to_dict("records")
     ]
     where = f"at L = {shares.length_um.iloc[0]:g} um, W = {shares.width_um.iloc[0]:.4g} um"
     return [
-        _table(title, columns, rows),
-        _table(f"What makes the {error} {where}", ["cause", f"sigma {shown}", "of the variance %"], parts),
+        text_table(title, columns, rows),
+        text_table(f"What makes the {error} {where}", ["cause", f"sigma {shown}", "of the variance %"], parts),
     ]
 
 
@@ -178,8 +168,8 @@ def loss_tables(answer: Answer) -> list[Table]:
             f"{row['width_um']:g}",
             f"{row['device_failure']:.2e} [{row['device_failure_low']:.1e}, {row['device_failure_high']:.1e}]"
             + ("?" if row["doubtful"] else ""),
-            _bounds(row, "chip_yield", "", 2, 100),
-            _plus_minus(row, "good_chips", "_per_cm2", 2),
+            bounds(row, "chip_yield", "", 2, 100),
+            plus_minus(row, "good_chips", "_per_cm2", 2),
         ]
         for row in rows
     ]
@@ -187,10 +177,84 @@ def loss_tables(answer: Answer) -> list[Table]:
         f"Loss: {one_line(answer.process)}, device {one_line(question['device'])}, {question['devices']} devices a chip, "
         f"{question['spares']} spares; ? is doubtful"
     )
-    return [_table(title, ["W um", "outside their limits", "chips working %", "good chips/cm2"], lines)]
+    return [text_table(title, ["W um", "outside their limits", "chips working %", "good chips/cm2"], lines)]
 
 
-TABLES = {"loss": loss_tables, "spread": spread_tables, "timing": timing_tables, "pair": pair_tables}
+def edge_tables(answer: Answer) -> list[Table]:
+    """Shifts by solution and by closed form, whether they agree, and the dopants' scatter."""
+    question = answer.question
+    rows = [
+        [
+            f"{row['width_um']:g}",
+            plus_minus(row, "edge_shift", "_mv", 3),
+            f"{row['closed_form_shift_mv']:.2f}",
+            f"{row['closed_form_over_solved']:.2f}",
+            "yes" if row["closed_form_agrees"] else "no",
+            plus_minus(row, "dopant_sigma_ratio", "", 4),
+            *([plus_minus(row, "dopant_sigma", "_mv", 3)] if question["length_um"] else []),
+        ]
+        for row in answer.table.to_dict("records")
+    ]
+    title = (
+        f"Edge: {one_line(answer.process)}, device {one_line(question['device'])}, nominal shift; dopants' sigma over its "
+        "closed form; a form that holds is within 10 %"
+    )
+    columns = ["W um", "solved mV", "closed mV", "ratio", "holds", "dopants"]
+    if question["length_um"]:
+        columns.append(f"mV, L {question['length_um']:g} um")
+    return [text_table(title, columns, rows)]
+
+
+def compare_tables(answer: Answer) -> list[Table]:
+    """The quantities of which more or less is better, and the break-down of the threshold's change."""
+    first, second = (one_line(name) for name in answer.table[["first", "second"]].iloc[0])
+    told = [row for row in answer.table.to_dict("records") if row["quantity"] in SHOWN[answer.question["question"]]]
+    rows = [
+        [
+            row["quantity"],
+            f"{row['width_um']:.4g}" if np.isfinite(row["width_um"]) else "",
+            f"{row['first_value']:.4g}",
+            f"{row['second_value']:.4g}",
+            _signed(row) + ("" if row["interval"] == "paired" else " s"),
+        ]
+        for row in told
+    ]
+    title = f"{answer.question['question'].capitalize()} compared: second less first [95 %]; s marks separate intervals"
+    tables = [text_table(title, ["quantity", "W um", first, second, "difference"], rows)]
+    if "compare_shares" in answer.tables:
+        shares = answer.tables["compare_shares"]
+        narrow = shares[shares.width_um == shares.width_um.min()]
+        parts = [
+            [
+                row["ingredient"],
+                plus_minus(row, "vth_mean", "_mv", 2),
+                plus_minus(row, "vth_variance", "_mv2", 2),
+            ]
+            for row in narrow.to_dict("records")
+        ]
+        where = f"Why, at W = {narrow.width_um.iloc[0]:g} um, from {first} to {second}"
+        tables.append(text_table(where, ["ingredient", "mean mV", "variance mV2"], parts))
+    return tables
+
+
+def _signed(row) -> str:
+    value, low, high = (row[name] for name in ("difference", "difference_low", "difference_high"))
+    if not np.isfinite(value):
+        return "out of reach"
+    width = high - low
+    digits = int(np.clip(1 - np.floor(np.log10(width)), 0, 9)) if width > 0 and np.isfinite(width) else 4
+    return f"{value:+.{digits}f} [{low:+.{digits}f}, {high:+.{digits}f}]"
+
+
+TABLES = {
+    "atoms": atoms_tables,
+    "compare": compare_tables,
+    "edge": edge_tables,
+    "loss": loss_tables,
+    "spread": spread_tables,
+    "timing": timing_tables,
+    "pair": pair_tables,
+}
 
 
 def show(answers: list[Answer], out: Console) -> None:
@@ -214,6 +278,11 @@ def _print_whole(table: Table, out: Console) -> None:
     out.width = max(usual, Measurement.get(out, out.options.update(max_width=10_000), table).maximum)
     out.print(table)
     out.width = usual
+
+
+def waiting(what: str):
+    """A moving sign with a few words while something is done; only on a terminal."""
+    return console(sys.stderr).status(Text(what)) if sys.stderr.isatty() else nullcontext()
 
 
 @contextmanager

@@ -11,13 +11,13 @@ from typing import Annotated
 import numpy as np
 import pandas as pd
 from pydantic import Field
-from scipy.special import ndtr, ndtri
 
+from mc.codec import storable
 from mc.experiment import Inputs
+from mc.groups import Grouped
 from mc.intervals import Estimate, Summary, bounded_mean
 from mc.plan import Block
 from mc.runner import Progress, run
-from mc.search import first_crossing
 from mc.tally import Grid, Moments
 from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.chip import Side, Stage, fail_probability, slowest_path
@@ -27,10 +27,11 @@ from studies.population import Population
 from studies.process_file import LEVELS, ProcessFile
 from studies.question import WidthQuestion
 from studies.settings import Settings, Workers
+from studies.timing_numbers import probit_crossing, timing_numbers
 from studies.timing_tail import Tail, TailAnswer, beyond_counting, tail_answers
 from studies.units import SUFFIXES
 
-BLOCK = 2048
+BLOCK = 512  # dies; small enough for a default run to have groups of blocks
 SLICE = 256  # dies at once; each is evaluated at some two hundred places
 DEFAULT_SAMPLES = 16384
 SLOWEST = ("slowest.edge_a.chip", "slowest.edge_b.chip")  # one standard normal a chip and edge
@@ -62,6 +63,7 @@ class Question(WidthQuestion):
     """device that pulls up"""
 
 
+@storable
 @dataclass(frozen=True, kw_only=True)
 class TimingTally:
     """Sums over dies: failure probabilities and their squares, shape (widths, periods), and the slowest path's moments."""
@@ -119,16 +121,19 @@ def answer(
     started = perf_counter()
     chips = prepare(question, file, settings)
     plan = make_plan(settings, default_samples=DEFAULT_SAMPLES, block_size=BLOCK)
-    tally, samples = run(
-        chips,
+    grouped, samples = run(
+        Grouped(task=chips),
         plan,
-        half_width=lambda tally: max(
-            (estimate.high - estimate.low) / 2 for estimate in _yields_at_period(tally, len(chips.stages))
+        half_width=lambda so_far: max(
+            (estimate.high - estimate.low) / 2 for estimate in _yields_at_period(so_far.total(), len(chips.stages))
         ),
         jobs=workers.jobs,
         backend=workers.backend,
         progress=progress,
+        ledger=workers.ledger,
+        name="dies",
     )
+    tally = grouped.total()
     rows = range(len(chips.stages))
     yields = _yields_at_period(tally, len(chips.stages))
     tails = _tails(question, chips, tally, samples, workers)
@@ -166,6 +171,7 @@ def answer(
         + sum(tail.dies * stage.evaluations_per_die for tail, stage in zip(tails, chips.stages)),
         seconds=perf_counter() - started,
         met=met,
+        numbers=timing_numbers(question, chips, grouped, yields, periods, min_width, tails),
     )
 
 
@@ -238,7 +244,7 @@ def _period_at(tally: TimingTally, chips: Chips, row: int, target: float) -> Est
     """Period at which the yield, interpolated on the probit scale, meets the target; bounds where its bounds do."""
     columns = range(1, chips.periods.shape[1])
     estimates = [_yield(tally, row, column) for column in columns]
-    crossing = partial(_probit_crossing, chips.periods[row, 1:] / SUFFIXES["ps"], target)
+    crossing = partial(probit_crossing, chips.periods[row, 1:] / SUFFIXES["ps"], target)
     return Estimate(
         value=crossing([estimate.value for estimate in estimates]),
         low=crossing([estimate.high for estimate in estimates]),
@@ -249,15 +255,9 @@ def _period_at(tally: TimingTally, chips: Chips, row: int, target: float) -> Est
     )
 
 
-def _probit_crossing(places, target: float, yields) -> float:
-    clipped = np.clip(yields, ndtr(-37.0), ndtr(8.0))
-    found = first_crossing(places, ndtri(clipped), ndtri(target))
-    return np.inf if np.isnan(found) else found
-
-
 def _smallest_width(question: Question, yields: list[Estimate]) -> Estimate:
     """Smallest width that meets the target, interpolated between the widths asked for on the probit scale."""
-    crossing = partial(_probit_crossing, question.width_um, question.target_yield)
+    crossing = partial(probit_crossing, question.width_um, question.target_yield)
     return Estimate(
         value=crossing([each.value for each in yields]),
         low=crossing([each.high for each in yields]),

@@ -7,13 +7,14 @@ its period is one failure region of a few dozen normals.
 from dataclasses import dataclass, field, replace
 
 import numpy as np
-from joblib import Parallel, delayed
 from scipy.special import ndtri
 
+from mc.codec import storable
 from mc.correlation import Copula
 from mc.experiment import Inputs
 from mc.intervals import Estimate
 from mc.rare import RareEstimate, failure_probability
+from mc.runner import results
 from mc.search import crossing_of_decreasing
 from studies.chip import Stage, slowest_path
 from studies.settings import Workers
@@ -135,6 +136,7 @@ class Tail:
         return tuple(dict.fromkeys(note for found in self.failures.values() for note in found.notes))
 
 
+@storable
 @dataclass(frozen=True, kw_only=True)
 class TailAnswer:
     """What the tail of one width gives: yield at the period asked for, period that the target needs [s], dies, doubts."""
@@ -147,10 +149,13 @@ class TailAnswer:
 
 def tail_answers(tails: list[Tail], target: float, slowest, workers: Workers) -> list[TailAnswer]:
     """The answers of every width. slowest : mean and sigma of each width's slowest path [s]"""
-    tasks = (delayed(_answered)(tail, target, *guess) for tail, guess in zip(tails, slowest))
-    return list(Parallel(n_jobs=workers.jobs, backend=workers.backend)(tasks))
+    items = {str(number): (tail, target, *guess) for number, (tail, guess) in enumerate(zip(tails, slowest))}
+    return results(
+        _answered, items, jobs=workers.jobs, backend=workers.backend, ledger=workers.ledger, name=f"tails of {slowest}"
+    )
 
 
-def _answered(tail: Tail, target: float, mean: float, sigma: float) -> TailAnswer:
+def _answered(item: tuple[Tail, float, float, float]) -> TailAnswer:
+    tail, target, mean, sigma = item
     found = {"chip_yield": tail.chip_yield(), "period": tail.period_at(target, mean, sigma)}
     return TailAnswer(**found, dies=tail.dies(), doubts=tail.doubts())

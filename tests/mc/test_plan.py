@@ -13,7 +13,9 @@ counts = st.integers(1, 5000)
 @settings(deadline=None, derandomize=True)
 @given(samples=counts, block_size=st.integers(1, 700))
 def test_blocks_cover_exactly(samples, block_size):
-    blocks = Plan(samples=samples, block_size=block_size).blocks(0, samples)
+    plan = Plan(samples=samples, block_size=block_size)
+    blocks = list(plan.blocks(0, samples))
+    assert len(blocks) == plan.count(0, samples)
     assert [block.number for block in blocks] == list(range(len(blocks)))
     assert all(block.size == block_size for block in blocks[:-1])
     assert 1 <= blocks[-1].size <= block_size
@@ -26,17 +28,17 @@ def test_a_longer_run_starts_with_the_shorter_ones_blocks(shorter, longer, block
     shorter, longer = sorted((shorter, longer))
     plan = Plan(samples=longer, block_size=block_size)
     whole = shorter // block_size
-    assert plan.blocks(0, longer)[:whole] == plan.blocks(0, shorter)[:whole]
+    assert list(plan.blocks(0, longer))[:whole] == list(plan.blocks(0, shorter))[:whole]
     # going on after whole blocks gives what one round would have given
-    joined = plan.blocks(0, whole * block_size) + plan.blocks(whole * block_size, longer)
-    assert joined == plan.blocks(0, longer)
+    joined = [*plan.blocks(0, whole * block_size), *plan.blocks(whole * block_size, longer)]
+    assert joined == list(plan.blocks(0, longer))
 
 
 def test_a_fixed_number_is_one_round():
     plan = Plan(samples=1050, block_size=100)
     assert plan.first_target() == 1050
     assert plan.next_target(1050, half_width=np.inf) == 1050
-    assert plan.blocks(0, 1050)[-1] == Block(10, 50)
+    assert list(plan.blocks(0, 1050))[-1] == Block(10, 50)
 
 
 def test_a_precision_starts_with_the_pilot():

@@ -1,7 +1,11 @@
 """The answer has the same bits wherever it was computed."""
 
+import os
+import signal
 import sys
 import time
+from dataclasses import dataclass
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -15,7 +19,7 @@ from mc.correlation import Copula
 from mc.experiment import Experiment, Inputs
 from mc.intervals import Summary
 from mc.plan import Block, Plan
-from mc.runner import run, run_blocks
+from mc.runner import WorkerLost, results, run, run_blocks
 
 # A worker process cannot count on finding a test module by its name, so what is defined here travels by value.
 cloudpickle.register_pickle_by_value(sys.modules[__name__])
@@ -150,3 +154,35 @@ def test_a_precision_out_of_reach_stops_at_the_limit():
     tally, samples = run(experiment(), plan, half_width=half_width)
     assert samples == tally.count == 15_000
     assert half_width(tally) > plan.precision
+
+
+@dataclass(frozen=True)
+class Fragile:
+    """A task whose worker is ended by the system at one block, until a file says that this has happened often enough."""
+
+    folder: Path
+    times: int
+
+    def __call__(self, block):
+        marks = list(self.folder.iterdir())
+        if block.number == 5 and len(marks) < self.times:
+            (self.folder / str(len(marks))).touch()
+            os.kill(os.getpid(), signal.SIGKILL)
+        return np.array([block.number, block.size])
+
+
+def test_a_lost_workers_blocks_are_done_again(tmp_path):
+    plan = Plan(samples=100, block_size=10)
+    total, samples = run(Fragile(tmp_path, 2), plan, jobs=2)
+    assert samples == 100 and np.array_equal(total, [45, 100])
+
+
+def test_a_block_that_ends_every_worker_ends_the_run(tmp_path):
+    with pytest.raises(WorkerLost, match="ended by the system 3 times at block"):
+        run(Fragile(tmp_path, 99), Plan(samples=100, block_size=10), jobs=2)
+
+
+def test_a_lost_workers_results_are_done_again(tmp_path):
+    items = {str(number): Block(number, 1) for number in range(8)}
+    found = results(Fragile(tmp_path, 1), items, jobs=2)
+    assert [int(each[0]) for each in found] == list(range(8))

@@ -5,6 +5,7 @@ Comparisons say abs=0 wherever they say rel: pytest.approx else allows 1e-12 bes
 
 import copy
 import io
+import json
 import tomllib
 from contextlib import redirect_stderr, redirect_stdout
 from importlib.resources import files
@@ -62,7 +63,7 @@ def demo_text():
 
 def changed(table, changes):
     """A copy of nested tables with values put in by dotted key; None takes a key away."""
-    table = copy.deepcopy(table)
+    table, changes = copy.deepcopy(table), copy.deepcopy(dict(changes))
     for dotted, value in changes.items():
         *path, key = dotted.split(".")
         place = table
@@ -176,3 +177,70 @@ def small_results(tmp_path_factory):
     (folder / "job.toml").write_text(SMALL_JOB, encoding="utf-8")
     finished = run_command("run", folder / "job.toml", "--out", folder / "results", "--jobs", 1)
     return Results(finished, folder / "results")
+
+
+HOSTILE = ("<script>alert(1)</script>", '"><img src=x onerror=alert(2)>', "{{7*7}}", "</title><b>bold</b>", "\x1b[31m\u202e")
+HOSTILE_TEXT = " ".join(HOSTILE)
+HOSTILE_NAME = "{{7+7}} &lt;b&gt; 'onload=alert(3) a'"  # a process's short name may hold none of < > * "
+HOSTILE_JOB = """
+title = TEXT
+[settings]
+seed = 3
+samples = 1000
+[process]
+NAME = "a FILE.toml"
+option_b = "option_b.toml"
+[[question]]
+ask = "spread"
+process = [NAME, "option_b"]
+device = TEXT
+length_um = 0.13
+width_um = [0.12, 0.16, 0.2, 1]
+[[question]]
+ask = "timing"
+process = NAME
+n_device = TEXT
+length_um = 0.13
+width_um = [0.12, 0.16]
+period_ps = 4500
+paths = 1500
+stages = 40
+supply_v = 0.6
+"""
+
+
+def _hostile_process(text: str, quoted: str) -> str:
+    """A demo process whose every string that a person can set is hostile."""
+    lines = []
+    for line in text.replace("[device.n", f"[device.{quoted}").replace('"n.', f'"{quoted[1:-1]}.').splitlines():
+        key = line.split(" = ")[0]
+        lines.append(f"{key} = {quoted}" if key in ("title", "source", "does_not_claim") else line)
+    return "\n".join(lines).replace(
+        "doping = { ", f"doping = {{ law = 'empirical', values_csv = 'm <img src=x onerror=1>.csv', values_column = {quoted}, "
+        "values_level = 'device', ", 1
+    )  # fmt: skip
+
+
+class HostileReport(NamedTuple):
+    """A report made of hostile strings, and the folder that holds it."""
+
+    finished: Finished
+    page: object
+
+
+@pytest.fixture(scope="session")
+def hostile_report(tmp_path_factory):
+    """A small job all of whose strings try to be markup, run once through the command."""
+    folder = tmp_path_factory.mktemp("hostile")
+    write_demo(folder)
+    quoted = json.dumps(HOSTILE_TEXT)  # a JSON string is a TOML string
+    for name, written in (("option_a", "a <img src=x onerror=alert(4)>"), ("option_b", "option_b")):
+        text = (folder / f"{name}.toml").read_text(encoding="utf-8")
+        (folder / f"{written}.toml").write_text(_hostile_process(text, quoted), encoding="utf-8")
+    rows = "\n".join(str(1 + 0.01 * (row % 7)) for row in range(40))
+    (folder / "m <img src=x onerror=1>.csv").write_text(f'"{HOSTILE_TEXT.replace(chr(34), 2 * chr(34))}"\n{rows}\n')
+    job = HOSTILE_JOB.replace("TEXT", quoted).replace("NAME", json.dumps(HOSTILE_NAME))
+    job = job.replace("a FILE", "a <img src=x onerror=alert(4)>")
+    (folder / "job.toml").write_text(job, encoding="utf-8")
+    finished = run_command("run", folder / "job.toml", "--out", folder / "results", "--jobs", 1)
+    return HostileReport(finished, folder / "results" / "report.html")

@@ -28,6 +28,15 @@ FLAGS = {  # a kind's questions, as a person types them; together every field wi
             "drain_v": 0.1,
         },
     ],
+    "edge": [
+        {"width_um": [0.12, 0.4], "device": "n"},
+        {"width_um": [0.12], "device": "n", "length_um": 0.13, "temperature_c": -20.0, "body_bias_v": 0.5},
+    ],
+    "atoms": [
+        {"width_um": [0.05, 0.1], "length_um": 0.05, "device": "n"},
+        {"width_um": [0.05], "length_um": 0.05, "device": "n", "devices": 30, "charge_level": 0.1, "mesh_nm": 2.0}
+        | {"field_nm": 40.0, "body_bias_v": 0.5, "temperature_c": -20.0},
+    ],
     "timing": [
         TIMING,
         TIMING | {"temperature_c": 85.0, "fan_out": 2.0, "wire_capacitance_ff": 0.4, "width_ratio": 2.5, "yield": 0.9},

@@ -22,7 +22,7 @@ def refused(widthwise):
     "words, said",
     [
         (["sprad"], "widthwise: no command 'sprad'; did you mean 'spread'?"),
-        (["\x1b[31m\n"], "widthwise: no command '\\x1b[31m\\x0a'; known: new, keys, run, spread, timing, loss, pair"),
+        (["\x1b[31m\n"], "widthwise: no command '\\x1b[31m\\x0a'; known: new, keys, run, compare, spread, timing, loss, edge, atoms, pair"),
         (["--versio"], "widthwise: unknown argument --versio; did you mean '--version'?"),
         (["-x"], "widthwise: unknown argument -x; see widthwise --help"),
         (["new"], "widthwise new: the following arguments are required: DIR"),
@@ -124,4 +124,4 @@ def test_stopping_by_hand(widthwise, make_job, monkeypatch):
 
     monkeypatch.setattr("studies.job.Job.answers", stops)
     finished = widthwise("run", make_job(), "--out", make_job().parent / "results")
-    assert finished == (130, "", "stopped; nothing was written\n")
+    assert finished == (130, "", "stopped; the same command goes on from here\n")

@@ -100,7 +100,7 @@ TABLE = {"kind": "table", "table_width_um": [0.1, 1.0], "table_factor": [1.2, 1.
         ({"device.n.edge": {"kind": "trench"}}, "kind = \"trench\" needs 'field_oxide_nm'"),
         ({"device.n.edge": TRENCH | {"shape": 1.0}}, "'shape' has no effect with kind = \"trench\"; remove it"),
         ({"device.n.edge": {"kind": "none", "shape": 1.0}}, "'shape' has no effect with kind = \"none\""),
-        ({"device.n.edge.field_oxide_nm": 300}, "'field_oxide_nm' has no effect with kind = \"field oxide\""),
+        ({"device.n.edge.trench_depth_nm": 300}, "'trench_depth_nm' has no effect with kind = \"field oxide\""),
         ({"device.n.edge": {"kind": "table"}}, "kind = \"table\" needs 'table_width_um'"),
         ({"device.n.edge": TABLE | {"table_factor": [1.2]}}, "the same number of entries, two or more"),
         ({"device.n.edge": TABLE | {"table_width_um": [1.0, 0.1]}}, "table_width_um must increase"),

@@ -9,6 +9,7 @@ from importlib.metadata import version
 
 import pytest
 
+from studies.keeping import LEDGER
 from studies.record import plain
 
 TABLES = ("spread.csv", "spread_shares.csv", "timing.csv")
@@ -22,18 +23,18 @@ def rows_of(path):
 
 
 def contents(folder):
-    """Every file's bytes by name."""
-    return {path.name: path.read_bytes() for path in folder.iterdir()}
+    """Every file's bytes by name, but for the ledger of finished work."""
+    return {path.name: path.read_bytes() for path in folder.iterdir() if path.name != LEDGER}
 
 
 def test_what_is_written(small_results):
     finished, folder = small_results
     assert finished.err == f"Written to {folder}\n"
     figures = [f"{name}.{kind}" for name in QUESTIONS for kind in ("png", "svg")]
-    assert sorted(contents(folder)) == sorted([*TABLES, *figures, "answers.json", "record.json"])
+    assert sorted(contents(folder)) == sorted([*TABLES, *figures, "answers.json", "record.json", "report.html"])
     for name, content in contents(folder).items():
-        start = {"png": b"\x89PNG\r\n", "svg": b"<?xml", "json": b"{\n"}.get(name.split(".")[1], b"process,")
-        assert content.startswith(start), name
+        start = {"png": b"\x89PNG\r\n", "svg": b"<?xml", "json": b"{\n", "html": b"<!DOCTYPE html>"}
+        assert content.lstrip().startswith(start.get(name.split(".")[1], b"process,")), name
 
 
 def test_exit_code_1_when_a_target_is_missed(small_results):
@@ -127,7 +128,7 @@ def test_a_record_says_how_to_repeat_it(small_results):
     assert record["workers"] == {"jobs": 1, "backend": "loky"}
     assert len(record["fingerprint"]) == len(hashlib.sha256().hexdigest())
     assert [question["name"] for question in record["questions"]] == list(QUESTIONS)
-    for question, block in zip(record["questions"], (65536, 65536, 2048, 2048)):
+    for question, block in zip(record["questions"], (16384, 16384, 512, 512)):
         assert question["samples"] == 2000 and question["block_size"] == block
         assert question["device_evaluations"] > 2000 and question["seconds"] > 0
     assert record["processes"]["option_b"]["device"]["n"]["oxide_thickness_nm"] == 2.6

@@ -13,7 +13,7 @@ from studies.units import SUFFIXES, micrometres, si, split_unit
 RECORDS = (Process, Device, Edge, ShortChannel, Scatter, Relative, Length, Voltage, Correlation, Settings)
 # keys of floats that are pure numbers
 NUMBERS = {"shape", "eta", "cut_sigmas", "value", "precision", "fan_out", "width_ratio", "target_yield", "table_factor"}
-NUMBERS |= {"leakage_ceiling_times", "clustering"}
+NUMBERS |= {"leakage_ceiling_times", "clustering", "charge_level"}
 
 
 @pytest.mark.parametrize(
