@@ -9,7 +9,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from mc.codec import storable
+from mc.codec import decode, encode, storable
 
 CELLS_PER_SIGMA = 128
 REACH = 16  # sigmas on either side
@@ -101,6 +101,10 @@ class Moments:
         return self.grid.center + scale * first, scale**2 * variance, scale**3 * skewed, scale**4 * peaked
 
 
+def _unpacked(data: bytes) -> "Tally":
+    return decode(data)
+
+
 @storable
 @dataclass(frozen=True, kw_only=True, eq=False)
 class Tally(Moments):
@@ -113,6 +117,10 @@ class Tally(Moments):
     cells: np.ndarray
     smallest: np.ndarray
     largest: np.ndarray
+
+    def __reduce__(self):
+        """To another process only the cells travel that hold anything."""
+        return _unpacked, (encode(self),)
 
     @classmethod
     def _empty(cls, grid):

@@ -132,7 +132,7 @@ class Job:
                 raise InputError(f"{one_line(asked.name)}: {error}") from None
             except FewerAsked as error:
                 raise InputError(f"{one_line(asked.name)}: {error}; add --replace to begin anew") from None
-            except (FloatingPointError, ChannelTooShort) as error:
+            except (FloatingPointError, OverflowError, ChannelTooShort) as error:
                 raise InputError(
                     f"{one_line(asked.file.path)}: {one_line(asked.name)}: some samples leave the range of the physics "
                     f"({error}); smaller variation or larger dimensions are needed"
@@ -164,7 +164,14 @@ def load_job(path, overrides: dict[str, Any], allow_outside: bool = False) -> Jo
                 f"{one_line(path)}: process.{one_line(name)}: a short name is needed, up to {LONGEST_NAME} characters that "
                 "can be part of a file's name"
             )
-        files[name] = load_process(_inside(path, f"process.{one_line(name)}", file, allow_outside), name)
+        place = _inside(path, f"process.{one_line(name)}", file, allow_outside)
+        try:
+            files[name] = load_process(place, name)
+        except InputError as error:
+            if place.is_file():
+                raise
+            why = str(error).rsplit(": ", 1)[-1]
+            raise InputError(f"{one_line(path)}: process.{one_line(name)} = {one_line(repr(file))}: {why}") from None
         for measured in files[name].measured_files():
             _inside(path, f"process.{one_line(name)}: measured values", measured, allow_outside)
     asked = []

@@ -7,7 +7,7 @@ import pytest
 from scipy import stats
 
 from mc.intervals import Summary
-from mc.tally import CELLS_PER_SIGMA, Grid, Moments, Tally
+from mc.tally import CELLS, CELLS_PER_SIGMA, Grid, Moments, Tally
 
 COUNT = 200_000
 
@@ -129,8 +129,14 @@ def test_moments_are_those_of_the_tally(grid, values, whole):
 
 
 def test_size_does_not_depend_on_the_count(grid, values, whole):
-    small = Tally.of(grid, [values[:, :10]])
     doubled = whole + whole
     assert doubled.count == 2 * COUNT
-    # all but the digits of the count itself
-    assert abs(len(pickle.dumps(doubled)) - len(pickle.dumps(small))) < 16
+    # all but the digits of the counts themselves; a tally of few samples fills fewer cells and is smaller
+    assert abs(len(pickle.dumps(doubled)) - len(pickle.dumps(whole))) < 64
+    assert len(pickle.dumps(Tally.of(grid, [values[:, :10]]))) < len(pickle.dumps(whole)) < CELLS * 8 * len(values)
+
+
+def test_a_tally_travels_whole(whole):
+    found = pickle.loads(pickle.dumps(whole))
+    assert np.array_equal(found.cells, whole.cells) and np.array_equal(found.powers, whole.powers)
+    assert found.count == whole.count and (found + whole).count == 2 * whole.count

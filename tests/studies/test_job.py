@@ -52,7 +52,7 @@ def test_the_demo_s_own_job_is_read(make_job):
             "job.toml: settings.samples = 999: input should be greater than or equal to 1000",
         ),
         ("seed = 7", "precision = 0.1", "job.toml: settings: give 'samples' or 'precision', not both"),
-        ('"option_a.toml"', '"option_c.toml"', "option_c.toml: no such file"),
+        ('"option_a.toml"', '"option_c.toml"', "process.option_a = 'option_c.toml': no such file"),
         ('"option_a.toml"', '"."', ": is a folder, a TOML file is needed"),
         ('"option_a.toml"', "3", "job.toml: process.option_a = 3: input should be a valid string"),
         (
