@@ -1,6 +1,6 @@
 """Two process options asked the same question on the same random numbers: what differs, where they cross over, and why."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from time import perf_counter
 
 import pandas as pd
@@ -16,6 +16,7 @@ from studies.compare_words import (
     verdict,
     why_sentences,
 )
+from studies.controlled import threshold_changes
 from studies.differences import Difference, crossings, differences
 from studies.errors import InputError
 from studies.process_content import same_process
@@ -51,6 +52,8 @@ def compare(compared: Compared, settings: Settings, workers: Workers, progress: 
     """The comparison as an answer of its own."""
     started = perf_counter()
     found = differences(*(answer.numbers for answer in compared.answers), compared.same)
+    if compared.kind == "spread" and not compared.same:
+        found = _better_known(compared, found, settings, workers)
     decider = decider_of(compared.kind, found)
     crossed = {name: crossings(curve) for name, curve in _curves(found).items()}
     place = _place(compared)
@@ -79,6 +82,20 @@ def compare(compared: Compared, settings: Settings, workers: Workers, progress: 
         evaluations=0,
         seconds=perf_counter() - started,
     )
+
+
+def _better_known(
+    compared: Compared, found: list[Difference], settings: Settings, workers: Workers
+) -> list[Difference]:
+    """The differences, those of the threshold's mean and sigma from a run of both options with a control."""
+    samples = min(answer.samples for answer in compared.answers)
+    changes = threshold_changes(compared.first, compared.second, compared.question, samples, settings, workers)
+    return [
+        replace(each, change=changes[each.name, each.width_um], paired=True)
+        if (each.name, each.width_um) in changes
+        else each
+        for each in found
+    ]
 
 
 def _asked(compared: Compared, decider: Decider, place: Place) -> dict[str, object]:

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from mc.intervals import Estimate
+from studies.controlled import METHOD
 from studies.differences import Difference
 from studies.why import Share
 
@@ -192,6 +193,12 @@ def compare_notes(found: list[Difference], shares: list[Share], neighbours: bool
         notes.append(
             "Both options saw the same random numbers, so that what moves both alike drops out of their difference: its "
             f"intervals are {np.median(narrower):.2g} times narrower (median) than two separate ones would be."
+        )
+    if any(each.change.method == METHOD for each in found):
+        notes.append(
+            "Differences of the threshold's mean and sigma come from both options on the same draws with a control: chance in the "
+            "linear part of the thresholds, whose mean and variance are known exactly, is taken off. They are better known "
+            "than the two values beside them, and need not be their difference to the last digit."
         )
     if not all(each.paired for each in found):
         notes.append(

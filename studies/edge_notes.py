@@ -150,4 +150,5 @@ def edge_width_notes(population: Population, geometries: tuple[Geometry, ...]) -
     outside = (
         "" if said.endswith("at every width asked for.") else ' method = "solved" in the edge table uses the solution.'
     )
-    return [f"Edges, by a solution of the file's geometry: {said}{outside}", *solved.notes]
+    device = population.where.rpartition(": ")[2].replace(".", " ", 1)
+    return [f"Edges of {device}, by a solution of the file's geometry: {said}{outside}", *solved.notes]

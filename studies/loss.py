@@ -22,6 +22,7 @@ from mc.plan import Block
 from mc.rare import RareEstimate, failure_probability
 from mc.runner import Progress, results
 from studies.answer import Answer, asked_columns, columns_of
+from studies.edge_notes import edge_width_notes
 from studies.errors import InputError
 from studies.loss_question import Question
 from studies.margins import SIDES, LimitState, Margins
@@ -218,7 +219,11 @@ def answer(
         table=table,
         headlines=headlines,
         sentences=loss_sentences(question, table.to_dict("records")),
-        notes=(*model_notes(population), *loss_notes(question, widths)),
+        notes=(
+            *model_notes(population),
+            *edge_width_notes(population, tuple(each.geometry for each in margins)),
+            *loss_notes(question, widths),
+        ),
         samples=len(dies),
         block_size=len(dies),
         evaluations=sum(width.calls + COUNTED for width in widths),

@@ -15,6 +15,7 @@ from mc.plan import Plan
 from mc.runner import Progress, run
 from studies.answer import Answer, make_plan, precision_notes
 from studies.biasing import Biasing
+from studies.edge_notes import edge_width_notes
 from studies.notes import model_notes, pair_notes, pair_sentences
 from studies.pair_numbers import pair_numbers
 from studies.pair_question import Question
@@ -81,6 +82,7 @@ def answer(
         sentences=pair_sentences(question, file.name, best, [search for search in searches if search.met]),
         notes=(
             *model_notes(population),
+            *edge_width_notes(population, (best.finger_geometry(),)),
             *pair_notes(question, population, best, whole, rows),
             *precision_notes(settings, best.samples),
         ),

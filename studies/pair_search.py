@@ -16,6 +16,7 @@ from mc.search import crossing_of_decreasing
 from mc.sensitivity import variance_share
 from studies.answer import asked_columns, columns_of
 from studies.biasing import Biasing
+from studies.geometry import Geometry
 from studies.pair_question import Question
 from studies.pair_tail import pair_failure, yields_of
 from studies.pairing import DISTANCE, GRADIENT, Arrangement, PairChips, PairTally
@@ -171,6 +172,11 @@ class Search:
     def shown_width(self) -> float:
         """The answer, or the widest width judged when the target is out of reach."""
         return self.width.value if self.met else max(self.judged)
+
+    def finger_geometry(self) -> Geometry:
+        """One finger of the answer's devices."""
+        width_um = self.shown_width() / self.question.fingers
+        return self.arrangement.population.geometry(width_um, self.biasing.length_um)
 
     def rows(self, file: ProcessFile) -> list[dict]:
         """Rows of pair.csv: the overview and the answer."""

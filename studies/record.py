@@ -129,6 +129,8 @@ def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[s
                     "question": asked.question.model_dump(by_alias=True),
                     "samples": answer.samples,
                     "block_size": answer.block_size,
+                    "blocks": math.ceil(answer.samples / answer.block_size),
+                    "seconds_per_block": round(answer.seconds / math.ceil(answer.samples / answer.block_size), 6),
                     "device_evaluations": answer.evaluations,
                     "seconds": round(answer.seconds, 3),
                 }

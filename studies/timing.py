@@ -21,6 +21,7 @@ from mc.runner import Progress, run
 from mc.tally import Grid, Moments
 from studies.answer import Answer, asked_columns, columns_of, make_plan, precision_notes
 from studies.chip import Side, Stage, fail_probability, slowest_path
+from studies.edge_notes import edge_width_notes
 from studies.errors import InputError, one_line
 from studies.notes import bound_notes, model_notes, timing_sentences, timing_tail_notes
 from studies.population import Population
@@ -161,6 +162,7 @@ def answer(
         sentences=timing_sentences(question, table.to_dict("records"), min_width),
         notes=(
             *(note for side in chips.stages[0].sides for note in model_notes(side.population)),
+            *_edge_notes(chips),
             *(() if tails else bound_notes(table, "dies", "ask for more samples")),
             *timing_tail_notes(question, tails),
             *precision_notes(settings, samples),
@@ -218,6 +220,16 @@ def _stages(question: Question, file: ProcessFile) -> tuple[Stage, ...]:
         )
         for width in question.width_um
     )
+
+
+def _edge_notes(chips: Chips) -> list[str]:
+    """How far the edges' model can be believed for either device of a stage."""
+    sides = zip(*(stage.sides for stage in chips.stages))
+    return [
+        note
+        for devices in sides
+        for note in edge_width_notes(devices[0].population, tuple(device.geometry for device in devices))
+    ]
 
 
 def _tails(question: Question, chips: Chips, tally: TimingTally, samples: int, workers: Workers) -> list[TailAnswer]:

@@ -12,7 +12,7 @@ from mc.intervals import Summary
 from mc.laws import Normal, Uniform
 from mc.plan import Block, Plan
 from mc.runner import run
-from mc.tally import Moments
+from mc.tally import Grid, Moments
 
 LAWS = {"load": Normal(mean=10.0, sigma=2.0), "share": Uniform(low=0.0, high=1.0)}
 INPUTS = Inputs(seed=0, names=("load", "share"))
@@ -99,3 +99,14 @@ def peak_bytes(samples):
 def test_memory_does_not_grow_with_the_samples():
     # 8 and 64 blocks; a run of one or two has not yet held a sum beside a block and their new sum
     assert peak_bytes(2**20) < 1.1 * peak_bytes(2**17)
+
+
+def test_what_is_not_finite_names_the_inputs_furthest_out():
+    def model(draws):
+        return np.where(draws["a"] > 2.5, np.nan, draws["a"] + draws["b"] + draws["c"] + draws["d"])
+
+    inputs = Inputs(seed=1, names=("a", "b", "c", "d"), slice_size=50)
+    experiment = Experiment(model=model, inputs=inputs, grid=Grid(center=np.zeros(1), scale=np.ones(1)))
+    with pytest.raises(FloatingPointError, match=r"not finite at .*a = \+[23]\.\d\d sigma") as raised:
+        experiment(Block(0, 5000))
+    assert str(raised.value).count(" sigma") == 3

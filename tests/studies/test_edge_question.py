@@ -265,7 +265,7 @@ def width_notes(file, widths, **conditions):
 
 def test_a_spread_says_where_the_closed_form_fails(make_plain_process):
     (note,) = width_notes(make_plain_process(WEAK), [0.3, 2.0])
-    assert note.startswith("Edges, by a solution of the file's geometry: The field oxide's closed form (shape 0.25)")
+    assert note.startswith("Edges of device n, by a solution of the file's geometry: The field oxide's closed form (shape 0.25)")
     assert 'method = "solved"' in note
     trench = width_notes(make_plain_process(WEAK | {"edge": TRENCH}), [0.3, 2.0])
     assert "The trench's closed form" in trench[0]
