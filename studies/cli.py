@@ -50,6 +50,7 @@ def _overview() -> Parser:
     commands.add_argument("new", nargs="?", help="write the demo: two process options and a job, into a folder")
     commands.add_argument("keys", nargs="?", help="tell every key of a process file, its range and its meaning")
     commands.add_argument("run", nargs="?", help="answer every question of a job file")
+    commands.add_argument("fit", nargs="?", help="fit a process file to measured thresholds, with uncertainties")
     commands.add_argument("compare", nargs="?", help="ask two process options the same question: what differs, and why")
     for kind, summary in SUMMARIES.items():
         commands.add_argument(kind, nargs="?", help=summary)
@@ -111,6 +112,19 @@ def _keys(arguments) -> int:
 
     print("\n".join(key_lines()))
     return DONE
+
+
+def _fit(arguments) -> int:
+    from studies.fit import Question
+    from studies.fit_command import add_arguments, run
+
+    parser = Parser(prog="widthwise fit", description=Question.__doc__, allow_abbrev=False)
+    add_arguments(parser)
+    _field_flags(parser, Question)
+    parser.add_argument("--jobs", type=int, default=_all_cores(), metavar="N", help="workers (default: all cores)")
+    parser.add_argument("--replace", action="store_true", help="overwrite files of these names")
+    parser.add_argument("--json", action="store_true", help="print the fit as JSON instead of a table")
+    return run(vars(parser.parse_args(arguments)))
 
 
 def _run(arguments) -> int:
@@ -242,12 +256,14 @@ def _command(arguments) -> int:
         return _keys(rest)
     if command == "run":
         return _run(rest)
+    if command == "fit":
+        return _fit(rest)
     if command == "compare":
         return _compare(rest)
     if command in SUMMARIES:
         return _ask(command, rest)
     raise InputError(
-        f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'keys', 'run', 'compare', *SUMMARIES])}"
+        f"widthwise: no command '{one_line(command)}'; {nearest(command, ['new', 'keys', 'run', 'fit', 'compare', *SUMMARIES])}"
     )
 
 

@@ -22,7 +22,7 @@ def refused(widthwise):
     "words, said",
     [
         (["sprad"], "widthwise: no command 'sprad'; did you mean 'spread'?"),
-        (["\x1b[31m\n"], "widthwise: no command '\\x1b[31m\\x0a'; known: new, keys, run, compare, spread, timing, loss, edge, atoms, pair"),
+        (["\x1b[31m\n"], "widthwise: no command '\\x1b[31m\\x0a'; known: new, keys, run, fit, compare, spread, timing, loss, edge, atoms, pair"),
         (["--versio"], "widthwise: unknown argument --versio; did you mean '--version'?"),
         (["-x"], "widthwise: unknown argument -x; see widthwise --help"),
         (["new"], "widthwise new: the following arguments are required: DIR"),
