@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 
 from mc.correlation import Copula
+from mc.groups import GROUPS, Groups
 from mc.laws import Law
 from mc.plan import Block
 from mc.streams import Streams
@@ -14,6 +15,7 @@ from mc.tally import Grid, Moments, Tally
 
 SLICE = 8192  # samples evaluated at once: a dozen arrays of this length stay in a core's cache
 NAMED = 3  # inputs that are named when an output is not finite
+SLICES_A_BLOCK = 8  # by which the groups of one block's slices go on from those of the block before
 PILOT = 4096  # samples that center and scale the tallies
 
 Model = Callable[[Mapping[str, np.ndarray]], Any]
@@ -113,3 +115,26 @@ class Experiment:
             outputs = _outputs(self.model, draws)
             del draws  # the next slice then takes their place in the cache
             yield outputs
+
+
+@dataclass(frozen=True, kw_only=True)
+class GroupedExperiment:
+    """An experiment whose tallies are kept in groups, slice by slice: a block is large for speed, a group need not be.
+
+    experiment : see `Experiment`
+    """
+
+    experiment: Experiment
+
+    def __call__(self, block: Block) -> Groups:
+        """Tallies of one block's slices. Raises FloatingPointError as `Experiment` does."""
+        tallies, sizes = {}, {}
+        try:
+            for index, outputs in enumerate(self.experiment._evaluated(block)):
+                number = (SLICES_A_BLOCK * block.number + index) % GROUPS
+                tally = self.experiment.tally.of(self.experiment.grid, [outputs])
+                tallies[number] = tallies[number] + tally if number in tallies else tally
+                sizes[number] = sizes.get(number, 0) + outputs.shape[1]
+        except FloatingPointError as error:
+            raise FloatingPointError(f"{error}{self.experiment._culprit(block)}") from None
+        return Groups(tallies, sizes)

@@ -6,10 +6,11 @@ cells a pilot sigma out to 16 sigmas; a quantile read from it is off by less tha
 """
 
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
-from mc.codec import decode, encode, storable
+from mc.codec import storable
 
 CELLS_PER_SIGMA = 128
 REACH = 16  # sigmas on either side
@@ -101,8 +102,10 @@ class Moments:
         return self.grid.center + scale * first, scale**2 * variance, scale**3 * skewed, scale**4 * peaked
 
 
-def _unpacked(data: bytes) -> "Tally":
-    return decode(data)
+def _unpacked(start: int, filled: np.ndarray, **rest) -> "Tally":
+    cells = np.zeros((len(filled), CELLS), np.int64)
+    cells[:, start : start + filled.shape[1]] = filled
+    return Tally(cells=cells, **rest)
 
 
 @storable
@@ -120,7 +123,13 @@ class Tally(Moments):
 
     def __reduce__(self):
         """To another process only the cells travel that hold anything."""
-        return _unpacked, (encode(self),)
+        held = np.flatnonzero(self.cells.any(axis=0))
+        start, stop = (int(held[0]), int(held[-1]) + 1) if held.size else (0, 0)
+        filled = self.cells[:, start:stop]
+        if filled.size and filled.max() < 2**31:
+            filled = filled.astype(np.int32)
+        rest = {name: getattr(self, name) for name in ("grid", "count", "powers", "smallest", "largest")}
+        return partial(_unpacked, **rest), (start, filled)
 
     @classmethod
     def _empty(cls, grid):

@@ -16,8 +16,7 @@ from time import perf_counter
 
 import numpy as np
 
-from mc.experiment import Experiment, Inputs
-from mc.groups import Grouped
+from mc.experiment import Experiment, GroupedExperiment, Inputs
 from mc.ledger import Ledger
 from mc.plan import Block, Plan
 from mc.runner import run
@@ -42,7 +41,7 @@ def task():
         drain_voltage=0.05,
         groups=(names,),
     )
-    return Grouped(task=Experiment.prepare(model, Inputs(seed=1, names=names, copula=population.copula)))
+    return GroupedExperiment(experiment=Experiment.prepare(model, Inputs(seed=1, names=names, copula=population.copula)))
 
 
 def seconds(work, repeats):

@@ -3,6 +3,7 @@
 from dataclasses import dataclass, replace
 from time import perf_counter
 
+import numpy as np
 import pandas as pd
 
 from mc.runner import Progress
@@ -116,6 +117,9 @@ def _place(compared: Compared) -> Place:
     """Where the threshold is taken apart: the question's device, its narrowest and its widest width."""
     question = compared.question
     widths = sorted({number.width_um for number in compared.answers[0].numbers if number.width_um is not None})
+    if compared.kind == "pair":  # at the answers themselves
+        found = [number for answer in compared.answers for number in answer.numbers if number.name == "min_width_um"]
+        widths = sorted(number.estimate.value for number in found if np.isfinite(number.estimate.value)) or widths
     device = next(getattr(question, key) for key in DEVICE_KEYS if hasattr(question, key))
     length = question.length_um
     if isinstance(length, list):

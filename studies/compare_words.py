@@ -1,6 +1,6 @@
 """What a comparison says: the verdict in one sentence, where the options cross over, and why they differ."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -16,6 +16,7 @@ class Decider:
 
     name : of `studies.numbers.Number`; words : what it is; unit : of it
     verb : what the better option does; curve : the number against width that crossings are told of
+    narrowest : width asked for; a smallest width that equals it is a bound [um]
     """
 
     name: str
@@ -23,6 +24,7 @@ class Decider:
     unit: str
     verb: str
     curve: str
+    narrowest: float = 0.0
 
 
 SIGMA = Decider(name="vth_sigma_mv", words="sigma(Vth)", unit=" mV", verb="spreads less", curve="vth_sigma_mv")
@@ -74,6 +76,9 @@ def decider_of(kind: str, found: list[Difference]) -> Decider:
 def verdict(decider: Decider, found: list[Difference], names: tuple[str, str], same: bool) -> str:
     """One sentence: which option is better, or that no difference can be shown, and what would show one."""
     deciding = [each for each in found if each.name == decider.name]
+    decider = replace(
+        decider, narrowest=min((each.width_um for each in found if each.width_um is not None), default=0.0)
+    )
     if same:
         return f"No difference: {names[0]} and {names[1]} are the same process."
     winners = [_winner(each) for each in deciding]
@@ -112,8 +117,12 @@ def _widths(each) -> str:
 def _numbers(decider: Decider, each: Difference, names: tuple[str, str]) -> str:
     place = f" at W = {each.width_um:g} um" if each.width_um is not None else ""
     one, other = (_value(end.value, decider.unit) for end in (each.first, each.second))
+    bounds = [each.name == "min_width_um" and end.value == decider.narrowest for end in (each.first, each.second)]
+    one, other = (f"{value} or less" if bound else value for value, bound in zip((one, other), bounds))
     text = f"{decider.words}{place} {one} ({names[0]}) and {other} ({names[1]})"
-    if np.isfinite(each.change.value):
+    if np.isfinite(each.change.value) and any(bounds):
+        text += f", a difference of {abs(each.change.value):.3g}{decider.unit} or more"
+    elif np.isfinite(each.change.value):
         change = each.change
         digits = _digits(change)
         text += f", a difference of {change.value:+.{digits}f}{decider.unit} [{change.low:+.{digits}f}, {change.high:+.{digits}f}]"
@@ -189,7 +198,7 @@ def compare_notes(found: list[Difference], shares: list[Share], neighbours: bool
         for each in found
         if each.paired and each.change.high > each.change.low
     ]
-    if narrower:
+    if narrower and np.median(narrower) > 1:
         notes.append(
             "Both options saw the same random numbers, so that what moves both alike drops out of their difference: its "
             f"intervals are {np.median(narrower):.2g} times narrower (median) than two separate ones would be."
@@ -197,13 +206,13 @@ def compare_notes(found: list[Difference], shares: list[Share], neighbours: bool
     if any(each.change.method == METHOD for each in found):
         notes.append(
             "Differences of the threshold's mean and sigma come from both options on the same draws with a control: chance in the "
-            "linear part of the thresholds, whose mean and variance are known exactly, is taken off. They are better known "
-            "than the two values beside them, and need not be their difference to the last digit."
+            "linear part of the thresholds, whose mean and variance are known exactly, is taken off. They are much better "
+            "known than the two values beside them: by hand these differ from them as far as their own intervals allow."
         )
     if not all(each.paired for each in found):
         notes.append(
-            "Differences marked 'separate' come from two separate intervals: tails found by the rare-event estimator, yields "
-            "that few samples carry, and numbers out of reach."
+            "Differences marked s (in files: separate) come from two separate intervals: tails found by the rare-event "
+            "estimator, yields that few samples carry, short runs, and widths or periods that no sample reaches."
         )
     if shares:
         whose = "of neighbours " if neighbours else ""

@@ -9,17 +9,19 @@ from dataclasses import dataclass
 import numpy as np
 
 from mc.experiment import Experiment, Inputs
-from mc.groups import Grouped, jackknife_half_width
+from mc.groups import GROUPS, Grouped, jackknife_half_width
 from mc.intervals import Estimate
 from mc.plan import Plan
 from mc.runner import run
 from mc.tally import Moments
 from studies.geometry import Geometry
+from studies.numbers import FEWEST_GROUPS
 from studies.population import Population
 from studies.process_file import ProcessFile
 from studies.settings import Settings, Workers
 from studies.spread import BLOCK, WITHOUT_EFFECT, Question
 
+SMALLEST_BLOCK = 256
 METHOD = "paired, linear control, delete-a-group jackknife"
 
 
@@ -107,15 +109,16 @@ def threshold_changes(
     for option in (model.first, model.second):
         if any(set(option.population.copula.needed((name,))) & set(names) - {name} for name in names):
             return {}  # the linear part's variance would need their correlation
+    block = max(SMALLEST_BLOCK, min(BLOCK, samples // GROUPS))  # short runs need groups too
     grouped, _ = run(
         Grouped(task=Experiment.prepare(model, Inputs(seed=settings.seed, names=names), Moments)),
-        Plan(samples=samples, block_size=BLOCK),
+        Plan(samples=samples, block_size=block),
         jobs=workers.jobs,
         backend=workers.backend,
         ledger=workers.ledger,
-        name="both options on the same draws",
+        name=f"both options on the same draws, {block} a block",
     )
-    if len(grouped.sizes) < 2:
+    if len(grouped.sizes) < FEWEST_GROUPS:
         return {}
     whole = model.change(grouped.total())
     half = jackknife_half_width(whole, [model.change(part) for part in grouped.without_each()], grouped.group_sizes())

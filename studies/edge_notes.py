@@ -53,7 +53,7 @@ def verdict(edge: Edge, widths_um, closed_mv, solved_mv) -> str:
     said = "; ".join(wrong[:MOST_NAMED])
     said += f"; and so on at {len(wrong) - MOST_NAMED} more" if len(wrong) > MOST_NAMED else ""
     if not close:
-        return f"{form_name(edge)} cannot be believed at any width asked for: {said}."
+        return f"{form_name(edge)} is more than 10 % off at every width asked for: {said}."
     return f"{form_name(edge)} is {within} only at W = {', '.join(close)} um: {said}."
 
 

@@ -239,10 +239,20 @@ def loss_sentences(question, rows) -> tuple[str, ...]:
         f"devices [{first['device_failure_low']:.2g}, {first['device_failure_high']:.2g}] are outside their limits; "
         f"{100 * first['chip_yield']:.2f} % [{100 * first['chip_yield_low']:.2f}, {100 * first['chip_yield_high']:.2f}] of "
         f"chips of {question.devices} devices work.",
-        f"Most good chips per wafer area at W = {best['width_um']:g} um [{min(near):g}, {max(near):g}] of the widths asked "
-        f"for: {best['good_chips_per_cm2']:.4g} per cm2 "
-        f"[{best['good_chips_low_per_cm2']:.4g}, {best['good_chips_high_per_cm2']:.4g}].",
+        f"Of the widths asked for W = {best['width_um']:g} um gives most good chips per wafer area, "
+        f"{best['good_chips_per_cm2']:.4g} per cm2 "
+        f"[{best['good_chips_low_per_cm2']:.4g}, {best['good_chips_high_per_cm2']:.4g}]{_ties(near, best, rows)}.",
     )
+
+
+def _ties(near, best, rows) -> str:
+    """What else may be as good: widths within the intervals, and those beyond the ones asked for."""
+    others = [f"{width:g}" for width in near if width != best["width_um"]]
+    said = f"; W = {', '.join(others)} um cannot be told from it" if others else ""
+    ends = {rows[0]["width_um"]: "narrower", rows[-1]["width_um"]: "wider"}
+    if len(rows) > 1 and best["width_um"] in ends:
+        said += f"; {ends[best['width_um']]} ones were not asked for and may give more"
+    return said
 
 
 def loss_notes(question, widths) -> list[str]:

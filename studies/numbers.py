@@ -12,6 +12,7 @@ from mc.groups import Groups
 from mc.intervals import Estimate
 
 FEWEST_SEEN = 20  # effective samples behind a share for its jackknife to be trusted
+FEWEST_GROUPS = 10  # with fewer the jackknife's own error is too large: with two it can be anything
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -46,7 +47,7 @@ def numbers_of(
     better : see `Number`, by name; estimates : by name, one a width
     read : function of a summed tally that gives the values, shape (quantities, widths), in the units of `estimates`
     """
-    several = len(groups.sizes) > 1
+    several = len(groups.sizes) >= FEWEST_GROUPS
     without = np.array([read(tally) for tally in groups.without_each()]) if several else None
     return tuple(
         Number(

@@ -45,7 +45,11 @@ def check_folder(folder: Path, job: Job, replace: bool) -> None:
         raise InputError(f"{where}: cannot be used ({one_line(getattr(error, 'strerror', None) or error)})") from None
     known = {_old_record(folder).get("fingerprint"), kept_fingerprint(folder)} if filled else set()
     if filled and job.fingerprint() not in known and not replace:
-        held = "the results of another job" if (folder / RECORD).exists() else "files that are no results of this job"
+        held = "files that are no results of this job"
+        if (folder / RECORD).exists():
+            held = "the results of another job"
+        elif kept_fingerprint(folder):
+            held = "the unfinished work of another job, or of this one with another input, seed or version"
         raise InputError(f"{where}: holds {held}; choose another folder or add --replace")
 
 
@@ -113,6 +117,14 @@ def _numbers(answer: Answer) -> dict[str, float]:
     return numbers
 
 
+def _blocks(answer: Answer) -> dict[str, float]:
+    """How many blocks a sampled answer took, and how long each; nothing for an answer without samples."""
+    if not answer.samples or not answer.block_size:
+        return {}
+    blocks = math.ceil(answer.samples / answer.block_size)
+    return {"blocks": blocks, "seconds_per_block": round(answer.seconds / blocks, 6)}
+
+
 def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[str]) -> dict:
     """What is needed to repeat the answers."""
     return plain(
@@ -129,8 +141,7 @@ def record_json(job: Job, answers: list[Answer], workers: Workers, files: list[s
                     "question": asked.question.model_dump(by_alias=True),
                     "samples": answer.samples,
                     "block_size": answer.block_size,
-                    "blocks": math.ceil(answer.samples / answer.block_size),
-                    "seconds_per_block": round(answer.seconds / math.ceil(answer.samples / answer.block_size), 6),
+                    **_blocks(answer),
                     "device_evaluations": answer.evaluations,
                     "seconds": round(answer.seconds, 3),
                 }

@@ -12,8 +12,8 @@ import numpy as np
 import pandas as pd
 from pydantic import Field
 
-from mc.experiment import Experiment, Inputs
-from mc.groups import Grouped, Groups
+from mc.experiment import Experiment, GroupedExperiment, Inputs
+from mc.groups import Groups
 from mc.intervals import Estimate, Summary
 from mc.plan import Plan
 from mc.runner import Progress, run
@@ -32,9 +32,9 @@ from studies.question import WidthQuestion
 from studies.settings import Settings, Workers
 from studies.variation import CAUSES
 
-BLOCK = 16384  # small enough for a default run to have groups of blocks, from which errors of differences come
+BLOCK = 65536
 DEFAULT_SAMPLES = 400_000
-SHARE_SAMPLES = 8 * BLOCK
+SHARE_SAMPLES = 2 * BLOCK
 QUANTILES = {"vth_p0_1": 0.001, "vth_p99_9": 0.999}
 BETTER = {"vth_mean_mv": 0, "vth_sigma_mv": -1, "vth_skew": 0, "vth_p0_1_mv": 0, "vth_p99_9_mv": 0}
 WITHOUT_EFFECT = ("mobility", "current_factor")  # causes that move currents but not thresholds
@@ -104,7 +104,7 @@ def answer(
 
     widths = range(len(geometries))
     grouped, samples = run(
-        Grouped(task=Experiment.prepare(model([groups["all"]]), inputs)),
+        GroupedExperiment(experiment=Experiment.prepare(model([groups["all"]]), inputs)),
         make_plan(settings, default_samples=DEFAULT_SAMPLES, block_size=BLOCK),
         half_width=lambda so_far: max(_relative_half_width(Summary(so_far.total(), width).sigma()) for width in widths),
         jobs=workers.jobs,

@@ -211,7 +211,7 @@ def compare_tables(answer: Answer) -> list[Table]:
     told = [row for row in answer.table.to_dict("records") if row["quantity"] in SHOWN[answer.question["question"]]]
     rows = [
         [
-            row["quantity"],
+            row["quantity"].replace("_", " "),
             f"{row['width_um']:.4g}" if np.isfinite(row["width_um"]) else "",
             f"{row['first_value']:.4g}",
             f"{row['second_value']:.4g}",
@@ -219,7 +219,8 @@ def compare_tables(answer: Answer) -> list[Table]:
         ]
         for row in told
     ]
-    title = f"{answer.question['question'].capitalize()} compared: second less first [95 %]; s marks separate intervals"
+    separate = "; s: see notes" if any(row["interval"] != "paired" for row in told) else ""
+    title = f"{answer.question['question'].capitalize()} compared: {second} less {first} [95 %]{separate}"
     tables = [text_table(title, ["quantity", "W um", first, second, "difference"], rows)]
     if "compare_shares" in answer.tables:
         shares = answer.tables["compare_shares"]

@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from mc.correlation import Copula
-from mc.experiment import PILOT, Experiment, Inputs, LawModel
+from mc.experiment import PILOT, Experiment, GroupedExperiment, Inputs, LawModel
 from mc.intervals import Summary
 from mc.laws import Normal, Uniform
 from mc.plan import Block, Plan
@@ -110,3 +110,17 @@ def test_what_is_not_finite_names_the_inputs_furthest_out():
     with pytest.raises(FloatingPointError, match=r"not finite at .*a = \+[23]\.\d\d sigma") as raised:
         experiment(Block(0, 5000))
     assert str(raised.value).count(" sigma") == 3
+
+
+def test_groups_of_slices_add_up_to_the_blocks():
+    inputs = Inputs(seed=1, names=("a",), slice_size=100)
+    experiment = Experiment.prepare(lambda draws: draws["a"], inputs)
+    grouped, samples = run(GroupedExperiment(experiment=experiment), Plan(samples=4250, block_size=800))
+    plain, _ = run(experiment, Plan(samples=4250, block_size=800))
+    total = grouped.total()
+    assert samples == total.count == grouped.group_sizes().sum() == 4250 and len(grouped.sizes) == 32
+    assert np.array_equal(total.cells, plain.cells) and np.allclose(total.powers, plain.powers, rtol=1e-12)
+    with pytest.raises(FloatingPointError, match=r"not finite at a = "):
+        bad = Experiment(model=lambda draws: draws["a"] / 0.0 * 0.0, inputs=inputs, grid=experiment.grid)
+        with np.errstate(all="ignore"):
+            GroupedExperiment(experiment=bad)(Block(0, 100))

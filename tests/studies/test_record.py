@@ -128,7 +128,7 @@ def test_a_record_says_how_to_repeat_it(small_results):
     assert record["workers"] == {"jobs": 1, "backend": "loky"}
     assert len(record["fingerprint"]) == len(hashlib.sha256().hexdigest())
     assert [question["name"] for question in record["questions"]] == list(QUESTIONS)
-    for question, block in zip(record["questions"], (16384, 16384, 512, 512)):
+    for question, block in zip(record["questions"], (65536, 65536, 512, 512)):
         assert question["samples"] == 2000 and question["block_size"] == block
         assert question["device_evaluations"] > 2000 and question["seconds"] > 0
     assert record["processes"]["option_b"]["device"]["n"]["oxide_thickness_nm"] == 2.6
