@@ -17,13 +17,13 @@ from studies.compare_words import (
     verdict,
     why_sentences,
 )
-from studies.controlled import threshold_changes
+from studies.controlled import METHOD, NUMBERS, threshold_changes
 from studies.differences import Difference, crossings, differences
 from studies.errors import InputError
 from studies.process_content import same_process
 from studies.process_file import ProcessFile
 from studies.settings import Settings, Workers
-from studies.why import Place, Share, shares
+from studies.why import Place, Share, breakdown
 
 DEVICE_KEYS = ("device", "n_device")  # a question's device; of a gate the one that pulls down
 
@@ -60,9 +60,9 @@ def compare(compared: Compared, settings: Settings, workers: Workers, progress: 
     place = _place(compared)
     notes = []
     try:
-        parts = shares(compared.first, compared.second, place, settings, workers, progress)
+        parts, evaluations = breakdown(compared.first, compared.second, place, settings, workers, progress)
     except (InputError, ChannelTooShort, FloatingPointError) as error:
-        parts = []
+        parts, evaluations = [], 0
         notes.append(f"Why they differ is not broken down: a mixture of both options has no physical answer ({error}).")
     curve = _curves(found).get(decider.curve, [])
     return Answer(
@@ -80,7 +80,7 @@ def compare(compared: Compared, settings: Settings, workers: Workers, progress: 
         notes=(*notes, *compare_notes(found, parts, place.neighbours)),
         samples=min(answer.samples for answer in compared.answers),
         block_size=compared.answers[0].block_size,
-        evaluations=0,
+        evaluations=evaluations + _controlled_devices(found),
         seconds=perf_counter() - started,
     )
 
@@ -97,6 +97,11 @@ def _better_known(
         else each
         for each in found
     ]
+
+
+def _controlled_devices(found: list[Difference]) -> int:
+    """Devices evaluated for the changes that have a control: both options', once for all numbers of a width."""
+    return sum(2 * each.change.n for each in found if each.change.method == METHOD) // len(NUMBERS)
 
 
 def _asked(compared: Compared, decider: Decider, place: Place) -> dict[str, object]:

@@ -49,7 +49,7 @@ DECIDERS = {
         words="the gate area of a pair",
         unit=" um2",
         verb="needs smaller pairs",
-        curve="offset_sigma_mv",
+        curve="",
     ),
     "loss": Decider(
         name="most_good_chips_per_cm2",
@@ -64,6 +64,8 @@ DECIDERS = {
 def decider_of(kind: str, found: list[Difference]) -> Decider:
     """What decides; for timing the period where both options meet the target at every width asked for, or at none."""
     decider = DECIDERS[kind]
+    if kind == "pair":  # a differential pair has an offset, a mirror an error
+        return replace(decider, curve=next(each.name for each in found if "_sigma_" in each.name))
     if kind == "timing":
         (widths,) = (each for each in found if each.name == decider.name)
         narrowest = min(each.width_um for each in found if each.width_um is not None)

@@ -22,6 +22,7 @@ from studies.settings import Settings, Workers
 from studies.spread import BLOCK, WITHOUT_EFFECT, Question
 
 SMALLEST_BLOCK = 256
+NUMBERS = ("vth_mean_mv", "vth_sigma_mv")  # of every width, from the same devices
 METHOD = "paired, linear control, delete-a-group jackknife"
 
 
@@ -131,6 +132,6 @@ def threshold_changes(
             n=samples,
             method=METHOD,
         )
-        for row, name in enumerate(("vth_mean_mv", "vth_sigma_mv"))
+        for row, name in enumerate(NUMBERS)
         for column, width in enumerate(question.width_um)
     }

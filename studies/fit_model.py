@@ -179,7 +179,10 @@ class Start:
         """The cells' devices with some keys changed, by temperature: which cells, and an array of devices."""
         edge = law.edge(*[values[parameter.key] for parameter in law.parameters])
         record, cells = self.record, self.cells
-        value = lambda key: values.get(key, getattr(record, key))  # noqa: E731
+
+        def value(key):
+            return values.get(key, getattr(record, key))
+
         short = self._bases[0][1].short_channel
         if "short_channel.eta" in values:
             short = short_channel.QuasiTwoDimensional(eta=values["short_channel.eta"])

@@ -6,6 +6,7 @@ Every mixture of the two options sees the same draws, so that shares of small ef
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import combinations
+from typing import NamedTuple
 
 import numpy as np
 
@@ -53,10 +54,17 @@ class Share:
     variance_mv2: Estimate
 
 
-def shares(
+class Breakdown(NamedTuple):
+    """Every ingredient's shares, width by width, and the devices that were evaluated for them."""
+
+    shares: list[Share]
+    evaluations: int
+
+
+def breakdown(
     first: ProcessFile, second: ProcessFile, place: Place, settings: Settings, workers: Workers, progress: Progress
-) -> list[Share]:
-    """Shares of every ingredient that differs, width by width; they add up to the change. Empty where nothing differs.
+) -> Breakdown:
+    """Shares of every ingredient that differs; they add up to the change. Empty where nothing differs.
 
     Where more than six differ, the five with the largest effects are told apart and the rest is one ingredient.
     Raises InputError where a mixture has no physical answer.
@@ -64,7 +72,7 @@ def shares(
     between = Between(first, second, place.device)
     names = between.names()
     if not names:
-        return []
+        return Breakdown([], 0)
     singles = [(), *((name,) for name in names)] if len(names) > MOST else []
     ingredients = _grouped(names, _moments(between, singles, place, settings, workers)) if singles else _each(names)
     numbers = range(len(ingredients))
@@ -79,7 +87,7 @@ def shares(
         for column, width in enumerate(place.width_um):
             mean, variance = (_estimate(share[0][row, column], half[row, column]) for row in (0, 1))
             found.append(Share(width_um=width, ingredient=name, mean_mv=mean, variance_mv2=variance))
-    return found
+    return Breakdown(found, (len(singles) + len(mixtures)) * len(place.width_um) * SAMPLES)
 
 
 def _each(names: Sequence[str]) -> list[tuple[str, tuple[str, ...]]]:

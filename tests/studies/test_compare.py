@@ -14,10 +14,11 @@ from studies.errors import InputError
 from studies.ingredients import MOST, Between
 from studies.job import load_job
 from studies.population import Population
+from studies.pair_search import CURVE
 from studies.process_file import load_process
 from studies.questions import question_module
 from studies.settings import Settings, Workers
-from studies.why import REST, Place, _moments_of, shares
+from studies.why import REST, Place, _moments_of, breakdown
 
 OPTIONS = [load_process(files("studies.examples") / f"option_{letter}.toml") for letter in "ab"]
 HERE, SETTINGS = Workers(jobs=1), Settings(seed=3, samples=65_536)
@@ -72,7 +73,8 @@ def test_one_changed_ingredient_makes_the_whole_difference():
 
 
 def test_shares_add_up_to_the_change():
-    parts = shares(*OPTIONS, PLACE, SETTINGS, HERE, lambda *_: None)
+    parts, evaluations = breakdown(*OPTIONS, PLACE, SETTINGS, HERE, lambda *_: None)
+    assert evaluations == (64 + 9) * 2 * why.SAMPLES  # all mixtures of six, and each of eight alone beside none
     assert len({part.ingredient for part in parts}) == MOST and REST in {part.ingredient for part in parts}
     between = Between(*OPTIONS, "n")
     ends = [_moments_of((between.option(chosen), PLACE, SETTINGS.seed))[0] for chosen in ((), between.names())]
@@ -198,3 +200,26 @@ def test_a_command_that_lacks_something(tmp_path, capsys, arguments, words):
     assert cli.main(["compare", str(tmp_path / "a.toml"), str(tmp_path / "b.toml"), *arguments]) == 2
     message = capsys.readouterr().err
     assert words in message and message.count("\n") == 1
+
+
+PAIR = {"device": "n", "pairs": 2, "yield": 0.9, "length_um": [1.0], "gm_over_i_per_v": 15}
+
+
+@pytest.mark.parametrize(
+    "kind, limit, curve",
+    [
+        ("differential pair", {"limit_mv": 3}, "offset_sigma_mv"),
+        ("current mirror", {"limit_percent": 5}, "error_sigma_percent"),
+    ],
+)
+def test_pairs_are_compared_by_their_own_error(kind, limit, curve):
+    answer = compared("pair", PAIR | {"kind": kind} | limit, *OPTIONS, Settings(seed=3, samples=2000))
+    assert answer.question["curve"] == curve and (answer.table.quantity == curve).sum() == CURVE
+    assert answer.sentences[0].startswith("option_b needs smaller pairs")
+
+
+def test_the_devices_evaluated_are_counted():
+    other = changed(OPTIONS[0], oxide_thickness_nm=2.9)
+    answer = compared("spread", SPREAD, OPTIONS[0], other, Settings(seed=3, samples=16_384))
+    controlled, mixtures = 2 * 3 * 16_384, 2 * 2 * why.SAMPLES
+    assert answer.evaluations == controlled + mixtures
