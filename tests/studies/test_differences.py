@@ -97,3 +97,18 @@ def test_samples_that_would_show_a_difference():
     found = difference(number(1.0, 0.9, 1.1), number(1.05, 0.95, 1.15), same=False)
     # the interval is sqrt(0.02) wide to either side; to see 0.05 with a power of four in five takes 2.04 times (0.1414/0.05)^2
     assert found.sign == 0 and found.samples_to_show() == pytest.approx(1000 * 2.04 * 8, rel=1e-6)
+
+
+def test_a_crossing_s_interval_is_where_the_bounds_cross():
+    # the difference rises by 1 a factor e of width and is zero at 0.5 um; bounds 0.4 to either side are crossed e^0.4 away
+    options = []
+    for slope in (0.0, 1.0):
+        values = slope * np.log(np.array(WIDTHS) / 0.5)
+        half = 0.4 / np.sqrt(2)
+        options.append(
+            tuple(number(value, value - half, value + half, width_um=width) for value, width in zip(values, WIDTHS))
+        )
+    (found,) = crossings(differences(*options, same=False))
+    assert found.value == pytest.approx(0.5, rel=1e-12)
+    assert found.low == pytest.approx(0.5 * np.exp(-0.4), rel=1e-12)
+    assert found.high == pytest.approx(0.5 * np.exp(0.4), rel=1e-12)
